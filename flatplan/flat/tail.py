@@ -1,0 +1,105 @@
+"""How much of a series is left when it is cut: a proven bound for each channel, and the terms to keep.
+
+For one rise and one channel, cut after term N,
+
+    |tail| ≤ Σ_(k>N) C_k t_D^k/(2k)! sup|y^(k)|,
+
+C_k from `coefficient_bounds`, sup|y^(k)| from `bounds`: per order up to some K, and the closed form beyond, where
+successive terms fall by a ratio that itself falls with k, so the rest is at most a geometric series.
+"""
+
+from __future__ import annotations
+
+import math
+from functools import lru_cache
+
+import numpy as np
+from scipy.special import gammaln
+
+from flatplan.flat.bounds import closed_form_radius, log_bump_bounds, log_closed_form
+from flatplan.flat.bump_integral import bump_integral
+from flatplan.flat.coefficient_bounds import scaled_bounds
+from flatplan.flat.rise import Rise
+from flatplan.site import Medium
+
+_INTEGRAL_SLACK = 1e-9  # relative, on the quadrature of the bump's integral (its error is near 1e-15)
+
+
+@lru_cache(maxsize=512)
+def rise_log_bounds(width: float, ramp: float, gamma: float, orders: int) -> np.ndarray:
+    """Logarithm of a bound on ``sup |y^(k)| / |weight|`` of a rise, k = 0 … orders."""
+    log_b = log_bump_bounds(gamma, orders)
+    k = np.arange(orders + 1, dtype=float)
+    log_total = math.log(bump_integral(gamma).total) - _INTEGRAL_SLACK
+    out = np.zeros(orders + 1)
+    out[1:] = log_b[:-1] - log_total - k[1:] * math.log(width)
+    if ramp > 0.0:
+        # its derivative is the mean of the step's over the ramp, and a difference of two corners
+        corner = 0.0 if ramp >= width else math.log(2.0)
+        out[1] = min(out[1], -math.log(ramp))
+        out[2:] = np.minimum(out[2:], log_b[:-2] - log_total - math.log(ramp) - (k[2:] - 1.0) * math.log(width) + corner)
+    return out
+
+
+def _log_closed(rise: Rise, k: np.ndarray) -> np.ndarray:
+    """The same by the closed form of the bump, for the sum to infinity; k ≥ 1."""
+    return log_closed_form(rise.gamma, k - 1.0) - math.log(bump_integral(rise.gamma).total) + _INTEGRAL_SLACK - k * math.log(rise.width)
+
+
+def tail_table(medium: Medium, rise: Rise, channels: tuple[tuple[str, int], ...], orders: int) -> np.ndarray:
+    """Tail bounds of one rise, SI, shape (channels, orders + 1): entry N is the bound when term N ≥ 1 is the last.
+
+    Parameters
+    ----------
+    medium : Medium
+    rise : Rise
+    channels : tuple of (str, int)
+        Channel and derivative of it.
+    orders : int
+        K, the last order bounded one by one; at least 8.
+
+    Returns
+    -------
+    ndarray
+        inf where the terms do not yet fall at K; inf for N = 0, as the bounds on coefficients begin at k = 2.
+    """
+    t_d = medium.travel_time
+    out = np.empty((len(channels), orders + 1))
+    k = np.arange(1, orders + 1, dtype=float)
+    shape = k * math.log(t_d) - gammaln(2.0 * k + 1.0)
+    for row, (channel, shift) in enumerate(channels):
+        sup = rise_log_bounds(rise.width, rise.ramp, rise.gamma, orders + max(shift, 0))
+        at = np.maximum(k.astype(int) + shift, 0)
+        bound = scaled_bounds(medium, channel, np.maximum(k, 2.0))
+        with np.errstate(divide="ignore", over="ignore"):
+            terms = np.exp(np.log(bound) + shape + sup[at] + math.log(abs(rise.weight)))
+            rest = _rest(medium, rise, channel, shift, orders)
+            out[row, :-1] = np.cumsum(np.concatenate([terms, [rest]])[::-1])[::-1][:-1]
+            out[row, -1] = rest
+    out[:, 0] = np.inf
+    return out * (1.0 + 1e-9)
+
+
+def _rest(medium: Medium, rise: Rise, channel: str, shift: int, orders: int) -> float:
+    """Σ over k > orders by the closed form and a geometric series.
+
+    From k to k + 1 a term changes by ``(X/ρ) (k+a)^s / ((2k+1)(2k+2))`` (a the shift) and the growth of C_k, a
+    polynomial of degree 4 at most; both are below the falling ``(X/4ρ) ((k+a)/k)² k^(s-2) (1+2/k)^4``.
+    """
+    k = orders + 1.0
+    bound = float(scaled_bounds(medium, channel, np.array([k]))[0])
+    if bound == 0.0:
+        return 0.0
+    t_d = medium.travel_time
+    first = math.log(bound * abs(rise.weight)) + k * math.log(t_d) - gammaln(2.0 * k + 1.0)
+    first += float(_log_closed(rise, np.array([k + shift]))[0])
+    log_ratio = math.log(t_d / (4.0 * gevrey_radius(rise))) + (rise.order - 2.0) * math.log(k)
+    log_ratio += 2.0 * math.log(max(k + shift, k) / k) + 4.0 * math.log1p(2.0 / k)
+    if log_ratio >= -1e-3 or first > 700.0:
+        return math.inf
+    return math.exp(first) / -math.expm1(log_ratio)
+
+
+def gevrey_radius(rise: Rise) -> float:
+    """ρ of the uniform Gevrey bound ``sup|y^(k)| ≤ M (k!)^s / ρ^k`` of a rise [s]."""
+    return closed_form_radius(rise.gamma) * rise.width
