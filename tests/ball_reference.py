@@ -255,7 +255,9 @@ class Slab:
         }[channel]
 
     @with_bits
-    def evaluate(self, channels: Iterable[str], moves: list[Move], t: float, terms: int, derivative: int = 0, x: float | None = None) -> dict[str, arb]:
+    def evaluate(
+        self, channels: Iterable[str], moves: list[Move], t: float, terms: int, derivative: int = 0, x: float | None = None
+    ) -> dict[str, arb]:
         """The channels (pressures: their change), or a time derivative of them, at ``t`` from the terms k = 0 … terms."""
         wanted = {}
         for channel in channels:
@@ -309,8 +311,8 @@ def path_field(medium, s: acb) -> tuple[acb, acb, acb, acb]:
     return p, f, bottomhole, f + acb(medium.well.storage) * s * bottomhole
 
 
-def path_taylor(medium, orders: int, bits: int | None = None) -> dict[str, list[arb]]:
-    """Taylor coefficients of `path_field`, scaled: ``c_k (2k)!/t_D^k``, k = 0 … orders, by channel.
+def path_taylor(medium, orders: int, bits: int | None = None, *, scaled: bool = True) -> dict[str, list[arb]]:
+    """Taylor coefficients of `path_field`, k = 0 … orders, by channel; scaled: ``c_k (2k)!/t_D^k``.
 
     Cauchy's integral over a circle by the trapezoidal rule. The field is entire of order 1/2: with the radius
     ``orders²/t_D`` and ``4 orders`` places the aliasing is below 1e-3^orders, far below the rounding of a double.
@@ -328,7 +330,7 @@ def path_taylor(medium, orders: int, bits: int | None = None) -> dict[str, list[
             coefficients, factor = [], arb(1)
             for k in range(orders + 1):
                 if k:
-                    factor *= arb(2 * k) * (2 * k - 1) / (t_d * radius)
+                    factor *= (arb(2 * k) * (2 * k - 1) / t_d if scaled else 1) / radius
                 total = values[0].real + (values[n // 2] * unit[(k * (n // 2)) % n]).real
                 total += 2 * sum(((values[i] * unit[(-k * i) % n]).real for i in range(1, n // 2)), arb(0))
                 coefficients.append((total / n * factor).mid())

@@ -10,7 +10,7 @@ history and its derivatives, ``bounds``/``coefficient_bounds``/``tail`` prove wh
 >>> medium = slab(length="140 m", area="6000 m^2", rock=rock, fluid=water)
 >>> plan = feedforward(medium, Target(start="21 MPa").move(to="22.5 MPa", over="3 d", order=1.8, easing=0.3))
 >>> round(plan.certificate.peak["injection_rate"] * 3600, 2)   # m³/h
-2.46
+2.86
 """
 
 from flatplan.flat.certificate import Certificate

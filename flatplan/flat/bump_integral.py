@@ -64,8 +64,8 @@ def bump_integral(gamma: float) -> BumpIntegral:
     vandermonde = chebyshev.chebvander(nodes, _DEGREE)
     vandermonde[:, 1:] *= 2.0
     coefficients = vandermonde.T @ values / (_DEGREE + 1)
-    integrated = []
-    half = []
+    integrated: list[np.ndarray] = []
+    half: list[float] = []
     for _ in range(3):
         coefficients = chebyshev.chebint(coefficients, lbnd=-1.0, scl=half_width)
         ends = coefficients.sum(axis=0)

@@ -279,7 +279,12 @@ def _zone_fields(symbols: _Symbols, zone: _Zone, q: sympy.Expr, r: sympy.Expr) -
         f_p = r * (a * q * h + c) - (a * c + h / q)
         f_f = r * c / a - h / (q * a)
     else:
-        i0, i1, k0, k1 = (lambda z: sympy.besseli(0, z)), (lambda z: sympy.besseli(1, z)), (lambda z: sympy.besselk(0, z)), (lambda z: sympy.besselk(1, z))
+        i0, i1, k0, k1 = (
+            (lambda z: sympy.besseli(0, z)),
+            (lambda z: sympy.besseli(1, z)),
+            (lambda z: sympy.besselk(0, z)),
+            (lambda z: sympy.besselk(1, z)),
+        )
         p_p = q * a * (k1(q * a) * i0(q * r) + i1(q * a) * k0(q * r))
         p_f = k0(q * a) * i0(q * r) - i0(q * a) * k0(q * r)
         f_p = q * r * q * a * (k1(q * a) * i1(q * r) - i1(q * a) * k1(q * r))

@@ -16,38 +16,8 @@ import numpy as np
 
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum, low_factors
-from flatplan.site import Medium
 
 _GUARD = 64
-
-
-def exact_scaled(medium: Medium, channel: str, orders: int, x: float | None = None) -> list[mpmath.mpf] | None:
-    """``ĉ_k`` in the working precision of mpmath, or None where only double precision is held.
-
-    One sealed zone in linear flow: ``φ̂_k(x) = (x/L)^2k`` and ``F̂_k = 2k T/L``.
-    """
-    simple = medium.flow == "linear" and len(medium.segments) == 1 and medium.segments[0].uniform and medium.face.sealed and not medium.leaks
-    if not simple:
-        return None
-    segment = medium.segments[0]
-    trans = mpmath.mpf(segment.mobility) * mpmath.mpf(segment.area_factor) / mpmath.mpf(segment.length)
-    resistance, storage = mpmath.mpf(medium.well_resistance), mpmath.mpf(medium.well.storage)
-    t_d = mpmath.mpf(medium.travel_time)
-    pressure = [mpmath.mpf(1)] * (orders + 1)
-    rate = [2 * k * trans for k in range(orders + 1)]
-    bottomhole = [p + resistance * f for p, f in zip(pressure, rate, strict=True)]
-    if channel == "target_pressure":
-        return [mpmath.mpf(1)] + [mpmath.mpf(0)] * orders
-    if channel == "sandface_pressure":
-        return pressure
-    if channel == "pressure":
-        ratio = (mpmath.mpf(float(x)) / mpmath.mpf(segment.length)) ** 2
-        return [ratio**k for k in range(orders + 1)]
-    if channel == "sandface_rate":
-        return rate
-    if channel == "bottomhole_pressure":
-        return bottomhole
-    return [rate[k] + (storage * bottomhole[k - 1] * (2 * k * (2 * k - 1)) / t_d if k else 0) for k in range(orders + 1)]
 
 
 def evaluate_extended(series: SeriesSum, scaled: list[list[mpmath.mpf]], times: np.ndarray, shift: int, digits: int) -> np.ndarray:
@@ -104,14 +74,14 @@ def _add_bumps(totals: list, series: SeriesSum, rise: Rise, terms: int, scaled: 
     rows = [_integers([w * coefficients[lowest + i] for i, w in enumerate(shared)], bits) for coefficients in scaled]
     for after, sign in rise.bumps:
         elapsed = (times - rise.start) - after
-        for i in np.flatnonzero((elapsed > 0.0) & (elapsed < rise.width)):
-            left = (mpmath.mpf(float(times[i])) - mpmath.mpf(rise.start) - mpmath.mpf(after)) / mpmath.mpf(rise.width)
+        for at in np.flatnonzero((elapsed > 0.0) & (elapsed < rise.width)):
+            left = (mpmath.mpf(float(times[at])) - mpmath.mpf(rise.start) - mpmath.mpf(after)) / mpmath.mpf(rise.width)
             made = _bump_row(left, rise.gamma, first + len(shared) - 1, bits)
             if made is None:
                 continue
             taylor, doubling, height = made
             for row, weights in enumerate(rows):
-                totals[row][i] += sign * factor * height * _dot(weights, taylor[first:], doubling, first, bits)
+                totals[row][at] += sign * factor * height * _dot(weights, taylor[first:], doubling, first, bits)
 
 
 def _integers(values: list[mpmath.mpf], bits: int) -> list[tuple[int, int]]:

@@ -131,7 +131,10 @@ class _Recurrence:
             first = 1.0 if start is self.from_pressure else 0.0
             inside = rate + (1.0 - first)
             self.transfer.append(
-                (first + np.sum(self.weights * self.resist * inside, axis=1), (1.0 - first) + np.sum(self.weights * self.leak * start, axis=1))
+                (
+                    first + np.sum(self.weights * self.resist * inside, axis=1),
+                    (1.0 - first) + np.sum(self.weights * self.leak * start, axis=1),
+                )
             )
 
     def step(self, source: np.ndarray, pressure: float, rate: float) -> tuple[np.ndarray, float, float]:
@@ -149,14 +152,14 @@ class _Recurrence:
         own_end = np.sum(self.weights * self.resist * inside, axis=1)
         rate_end = total_rate + np.sum(self.weights * self.leak * own, axis=1)
         (pp, rp), (pr, rr) = self.transfer
-        levels, rates = [pressure], [rate]
+        level_list, rate_list = [pressure], [rate]
         # A 2×2 march over the panels: plain floats are quicker than arrays of length two.
         for a, b, c, d, e, f in zip(*(v.tolist() for v in (pp, pr, rp, rr, own_end, rate_end)), strict=True):
-            p, q = levels[-1], rates[-1]
-            levels.append(a * p + b * q + e)
-            rates.append(c * p + d * q + f)
-        phi = own + np.array(levels[:-1])[:, None] * self.from_pressure + np.array(rates[:-1])[:, None] * self.from_rate
-        return phi, levels[-1], rates[-1]
+            p, q = level_list[-1], rate_list[-1]
+            level_list.append(a * p + b * q + e)
+            rate_list.append(c * p + d * q + f)
+        phi = own + np.array(level_list[:-1])[:, None] * self.from_pressure + np.array(rate_list[:-1])[:, None] * self.from_rate
+        return phi, level_list[-1], rate_list[-1]
 
 
 def _run(medium: Medium, orders: int) -> GeneratingTable:
@@ -164,7 +167,10 @@ def _run(medium: Medium, orders: int) -> GeneratingTable:
     face = medium.face
     t_d = medium.travel_time
     held = face.held
-    fields, at_end, rate_end, stored = [], [], [], []
+    fields: list[np.ndarray] = []
+    at_end: list[float] = []
+    rate_end: list[float] = []
+    stored: list[float] = []
     source = np.zeros_like(line.nodes)
     for k in range(orders + 1):
         if k == 0:

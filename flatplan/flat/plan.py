@@ -2,20 +2,20 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass, field
-from functools import cached_property
 from typing import Any
 
-import mpmath
 import numpy as np
 
 from flatplan import units
 from flatplan.channels import CHANNELS, Channels
 from flatplan.flat.bump import MOST_ORDERS
 from flatplan.flat.certificate import Certificate
-from flatplan.flat.extended import evaluate_extended, exact_scaled
+from flatplan.flat.extended import evaluate_extended
 from flatplan.flat.generating import generating_table, pressure_at, scaled_coefficients
+from flatplan.flat.precise import precise_pressure, precise_scaled
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum
 from flatplan.flat.tail import gevrey_radius, tail_table
@@ -40,6 +40,7 @@ _FIRST_ORDERS = 96
 # Rounding of the double path, in units of 2^-53 times the sum of the sizes of the terms: measured, see
 # tests/test_flat_accuracy.py, where it is compared with ball arithmetic.
 _ROUNDING_UNITS = 40.0
+_ROUNDING_UNITS_PER_TERM = 2.5  # the coefficients' own error grows with their order
 _UNIT = 2.0**-53
 
 
@@ -75,12 +76,6 @@ class Plan(Record):
     def knots(self) -> np.ndarray:
         """Times [s] where a corner begins or ends."""
         return self.target.knots
-
-    @cached_property
-    def _scaled(self) -> dict[str, np.ndarray]:
-        terms = max(self.series.terms)
-        names = [c for c in CHANNELS if c not in _SERIES_NAME]
-        return {name: scaled_coefficients(self.medium, name, terms) for name in names}
 
     def evaluate(self, channel: str, times: Any, derivative: int = 0) -> np.ndarray:
         """One channel, or a time derivative of it, as a series.
@@ -125,15 +120,17 @@ class Plan(Record):
         return out
 
     def _sum_shift(self, names: list[str], times: np.ndarray, shift: int) -> np.ndarray:
+        most = max(self.series.terms)
         if self.certificate.digits > 16:
-            return self._extended([(name, None) for name in names], times, shift)
-        return self.series.evaluate(np.array([self._scaled[name] for name in names]), times, shift)
+            exact = precise_scaled(self.medium, tuple(names), most, self._bits)
+            if exact is not None:
+                return evaluate_extended(self.series, exact, times, shift, self.certificate.digits)
+        return self.series.evaluate(np.array([scaled_coefficients(self.medium, name, most) for name in names]), times, shift)
 
-    def _extended(self, wanted: list[tuple[str, float | None]], times: np.ndarray, shift: int) -> np.ndarray:
-        digits = self.certificate.digits
-        with mpmath.workdps(digits + 20):
-            exact = [exact_scaled(self.medium, name, max(self.series.terms), x) for name, x in wanted]
-        return evaluate_extended(self.series, exact, times, shift, digits)
+    @property
+    def _bits(self) -> int:
+        """Working bits of the coefficients where double precision is not enough."""
+        return math.ceil(self.certificate.digits * math.log2(10.0))
 
     def rate(self, times: Any) -> np.ndarray:
         """Injection rate [m³/s] at ``times`` [s], shape (len(times),)."""
@@ -189,7 +186,8 @@ class Plan(Record):
         places = self.medium.positions(x)
         t = units.si_array(times, "time", "times")
         if self.certificate.digits > 16:
-            return self.target.start + self._extended([("pressure", x) for x in places], t, 0)
+            exact = [precise_pressure(self.medium, float(x), max(self.series.terms), self._bits) for x in places]
+            return self.target.rest_pressure + evaluate_extended(self.series, exact, t, 0, self.certificate.digits)
         table = generating_table(self.medium, max(self.series.terms))
         scaled = pressure_at(table, places)[: max(self.series.terms) + 1].T
         return self.target.rest_pressure + self.series.evaluate(scaled, t)
@@ -207,8 +205,7 @@ class Plan(Record):
         Volumes
         """
         t = units.si_array(self.end if times is None else times, "time", "times")
-        most = max(self.series.terms)
-        in_rock = self.series.evaluate(scaled_coefficients(self.medium, "stored_volume", most)[None, :], t)[0]
+        in_rock = self._sum_shift(["stored_volume"], t, 0)[0]
         injected, bottomhole = self.rows([("injected_volume", 0), ("bottomhole_pressure", 0)], t)
         stored = in_rock + self.medium.well.storage * bottomhole
         if self.medium.face.storage:
@@ -228,7 +225,11 @@ class Plan(Record):
         if self.medium.leaks:
             yield "of it stored", units.text(float(volumes.stored[0]), "volume")
             yield "of it leaked", units.text(float(volumes.leaked[0]), "volume")
-        yield "series", f"order {c.order:.4g}, {c.terms} terms, {c.digits} digits; {'within' if c.met else 'NOT within'} {self.tolerance:.0e} of each peak"
+        yield (
+            "series",
+            f"order {c.order:.4g}, {c.terms} terms, {c.digits} digits; "
+            f"{'within' if c.met else 'NOT within'} {self.tolerance:.0e} of each peak",
+        )
 
 
 def feedforward(medium: Medium, target: Target, *, tolerance: float = 1e-9) -> Plan:
@@ -269,7 +270,8 @@ def feedforward(medium: Medium, target: Target, *, tolerance: float = 1e-9) -> P
         raise ValueError(f"target: its start is a {target.kind}, but for this target face it takes {wants}.")
     if medium.face.held and target.start != 0.0:
         raise ValueError(
-            f"target: starts at {units.text(target.start, 'rate')}; the rate through a held face is counted from the equilibrium in which the plan starts, so it takes 0."
+            f"target: starts at {units.text(target.start, 'rate')}; the rate through a held face is counted from the equilibrium "
+            "in which the plan starts, so it takes 0."
         )
     value = units.si(tolerance, "fraction", "tolerance", "positive")
     if not 1e-13 <= value <= 0.1:
@@ -339,22 +341,31 @@ class _Planner:
         if not np.any(fits):
             x = self.medium.travel_time / rise.width
             raise ValueError(
-                f"target: at order {rise.order:.4g} and an eased corner of {units.text(rise.width, 'time')} (travel time over corner {x:.3g}) the series needs "
-                f"more than {MOST_ORDERS - 2} terms; take a longer duration, a larger easing or a lower order."
+                f"target: at order {rise.order:.4g} and an eased corner of {units.text(rise.width, 'time')} "
+                f"(travel time over corner {x:.3g}) the series needs more than {MOST_ORDERS - 2} terms; "
+                "take a longer duration, a larger easing or a lower order."
             )
         return max(int(np.argmax(fits)), 2)
 
     def _certified(self, sums: SeriesSum, peak: dict, size: dict) -> Plan:
         tails = _summed_tails(self.rises, [self._tail(rise)[:, n] for rise, n in zip(self.rises, sums.terms, strict=True)])
-        rounding = {key: _ROUNDING_UNITS * _UNIT * size[key] for key in _DECIDING}
+        units_lost = _ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)
+        rounding = {key: units_lost * _UNIT * size[key] for key in _DECIDING}
         digits = 16
         short = [key for key in _DECIDING if rounding[key] > 0.5 * self.tolerance * peak[key]]
-        if short and exact_scaled(self.medium, "injection_rate", 1) is not None:
+        if short and all(segment.uniform for segment in self.medium.segments):
             ratio = max(size[key] / (self.tolerance * peak[key]) for key in _DECIDING)
             digits = int(np.ceil(np.log10(ratio))) + 6
             # the sum itself is rounded to a double once, and its smooth low orders are doubles
             rounding = {key: (16.0 + 2.0 * max(sums.terms)) * _UNIT * peak[key] + size[key] * 10.0**-digits for key in _DECIDING}
-        names = {"injection_rate": 0, "sandface_rate": 0, "bottomhole_pressure": 0, "sandface_pressure": 0, "target_pressure": 0, "injected_volume": -1}
+        names = {
+            "injection_rate": 0,
+            "sandface_rate": 0,
+            "bottomhole_pressure": 0,
+            "sandface_pressure": 0,
+            "target_pressure": 0,
+            "injected_volume": -1,
+        }
         index = {key: i for i, key in enumerate(_DECIDING)}
         tail_out, rounding_out, peak_out, cancellation = {}, {}, {}, {}
         for name in CHANNELS:

@@ -105,7 +105,7 @@ class Rise:
         first, second = (times - self.start) / self.width, (times - self.start - self.ramp) / self.width
         part = {1: _step, 0: _corner, -1: _corner_area}[order]
         under_way = (first > 0.0) & (times < self.end)
-        parts = np.abs(self.weight) * self.width**(1 - order) / self.ramp * (part(integral, first) + part(integral, second))
+        parts = np.abs(self.weight) * self.width ** (1 - order) / self.ramp * (part(integral, first) + part(integral, second))
         return np.abs(self.low_order(times, order)) + np.where(under_way, parts, 0.0)
 
 

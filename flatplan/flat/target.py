@@ -20,7 +20,6 @@ from flatplan.flat.rise import Rise
 from flatplan.flat.summation import corner_tables, derivative_weights
 from flatplan.records import Record
 
-
 # γ = 1/(s - 1) below 6: `bump_integral` keeps 14 digits and `bump.FLAT_EXPONENT` holds up to there.
 LEAST_ORDER = 1.17
 # A ramp much shorter than its bump is a difference of two nearly equal bumps: 1e-3 of its length costs three digits.
@@ -100,14 +99,20 @@ class Target(Record):
     kind: str
     rest_pressure: float
 
-    def __init__(self, start: Any, moves: tuple[Move, ...] = (), end: float = 0.0, kind: str | None = None, *, pressure: Any = None) -> None:
+    def __init__(
+        self, start: Any, moves: tuple[Move, ...] = (), end: float = 0.0, kind: str | None = None, *, pressure: Any = None
+    ) -> None:
         put = object.__setattr__
         if kind is None:
             kind = "rate" if _is_rate(start) else "pressure"
         put(self, "start", units.si(start, kind, "start"))
         if kind == "pressure" and pressure is not None:
             raise ValueError("pressure: is for a held face, whose target starts at a rate; here start= is the pressure at rest.")
-        put(self, "rest_pressure", self.start if kind == "pressure" else units.si(0.0 if pressure is None else pressure, "pressure", "pressure"))
+        put(
+            self,
+            "rest_pressure",
+            self.start if kind == "pressure" else units.si(0.0 if pressure is None else pressure, "pressure", "pressure"),
+        )
         put(self, "moves", tuple(moves))
         put(self, "end", float(end))
         put(self, "kind", kind)
@@ -146,11 +151,13 @@ class Target(Record):
         order_value = units.si(order, "fraction", "order")
         if not 1.0 < order_value < 2.0:
             raise ValueError(
-                f"order: got {order!r}; it takes a Gevrey order above 1 and below 2 (at 1 a move cannot start from rest, from 2 on the series may diverge)."
+                f"order: got {order!r}; it takes a Gevrey order above 1 and below 2 "
+                "(at 1 a move cannot start from rest, from 2 on the series may diverge)."
             )
         if order_value < LEAST_ORDER:
             raise ValueError(
-                f"order: got {order!r}; orders from {LEAST_ORDER} on are held (nearer 1 a bump is a spike of a few thousandths of its width)."
+                f"order: got {order!r}; orders from {LEAST_ORDER} on are held "
+                "(nearer 1 a bump is a spike of a few thousandths of its width)."
             )
         easing_value = units.si(easing, "fraction", "easing")
         if not 0.0 < easing_value <= 1.0:
@@ -253,7 +260,8 @@ class Target(Record):
             level += m.change
             yield (
                 f"from {units.text(m.start, 'time')}",
-                f"to {units.text(level, self.kind, digits=6)} over {units.text(m.duration, 'time')} (order {m.order:g}, easing {m.easing:g})",
+                f"to {units.text(level, self.kind, digits=6)} over {units.text(m.duration, 'time')} "
+                f"(order {m.order:g}, easing {m.easing:g})",
             )
         yield "end", units.text(self.end, "time")
 

@@ -42,9 +42,11 @@ class Path:
         """Area grows like ``r**power``."""
         return {"linear": 0, "radial": 1, "spherical": 2}[self.flow]
 
-    def segments(self, start: float, end: float, rock: Rock | RockProfile, fluid: Fluid, leakage: Any, area: float | None = None) -> tuple[Segment, ...]:
+    def segments(
+        self, start: float, end: float, rock: Rock | RockProfile, fluid: Fluid, leakage: Any, area: float | None = None
+    ) -> tuple[Segment, ...]:
         """The stretch from ``start`` to ``end`` on the path [m], filled with one rock and fluid; in pieces where the rock varies."""
-        geometry = {
+        geometry: dict[str, Any] = {
             "area_factor": self.area_factor if area is None else area,
             "leakage": leakage_value(leakage, fluid.viscosity),
             "power": self.power,
@@ -53,7 +55,9 @@ class Path:
         }
         total = total_compressibility(rock, fluid)
         if isinstance(rock, Rock):
-            return (Segment(start=start, end=end, mobility=rock.permeability / fluid.viscosity, capacity=rock.porosity * total, **geometry),)
+            return (
+                Segment(start=start, end=end, mobility=rock.permeability / fluid.viscosity, capacity=rock.porosity * total, **geometry),
+            )
         places, permeability, porosity = rock.sampled(end - start, self._default_places(start, end))
         x = start + places
         x[-1] = end
@@ -96,7 +100,9 @@ def radii(target_radius: Any, well_radius: Any) -> tuple[float, float]:
     return target_m, well_m
 
 
-def medium_on(path: Path, segments: tuple[Segment, ...], face: Face | None, well: Well | None, skin_length: float | None, inputs: dict[str, Any]) -> Medium:
+def medium_on(
+    path: Path, segments: tuple[Segment, ...], face: Face | None, well: Well | None, skin_length: float | None, inputs: dict[str, Any]
+) -> Medium:
     """The medium of these segments, its face and well checked, its skin turned into a resistance.
 
     Parameters
@@ -110,12 +116,15 @@ def medium_on(path: Path, segments: tuple[Segment, ...], face: Face | None, well
     resistance = well.resistance
     if well.skin:
         if skin_length is None:
-            raise ValueError("height: got none; a skin factor in linear flow needs the height of the layer; give height=, or state a resistance in the Well.")
+            raise ValueError(
+                "height: got none; a skin factor in linear flow needs the height of the layer; "
+                "give height=, or state a resistance in the Well."
+            )
         resistance += well.skin / (skin_length * float(segments[-1].mobility_at(segments[-1].end)))
     if resistance < 0.0 and well.storage:
         raise ValueError(
-            f"skin: got {well.skin:g} with wellbore storage; with a resistance below zero the stored fluid would drive the bottomhole pressure away without end. "
-            "Take an effective well radius r_w exp(-skin) and no skin instead."
+            f"skin: got {well.skin:g} with wellbore storage; with a resistance below zero the stored fluid would drive the bottomhole "
+            "pressure away without end. Take an effective well radius r_w exp(-skin) and no skin instead."
         )
     return Medium(path.flow, segments, face=face, well=well, well_resistance=resistance, inputs=inputs)
 

@@ -50,7 +50,9 @@ class RockProfile(Record):
         put(self, "compressibility", units.si(compressibility, "compressibility", "rock compressibility", "not negative"))
         places = None if at is None else _places(at)
         put(self, "at", places)
-        put(self, "permeability", permeability if callable(permeability) else _samples(permeability, "permeability", "permeability", places))
+        put(
+            self, "permeability", permeability if callable(permeability) else _samples(permeability, "permeability", "permeability", places)
+        )
         if callable(porosity):
             put(self, "porosity", porosity)
         elif np.ndim(porosity) == 0 and not isinstance(porosity, (list, tuple)):

@@ -61,5 +61,12 @@ def radial(
     height_m = units.si(height, "length", "height", "positive")
     path = Path("radial", 2.0 * math.pi * height_m, target_m, math.copysign(1.0, well_m - target_m))
     segments = path.segments(0.0, abs(well_m - target_m), rock, fluid, leakage)
-    inputs = {"target_radius": target_m, "well_radius": well_m, "height": height_m, "rock": rock, "fluid": fluid, "leakage": segments[0].leakage}
+    inputs = {
+        "target_radius": target_m,
+        "well_radius": well_m,
+        "height": height_m,
+        "rock": rock,
+        "fluid": fluid,
+        "leakage": segments[0].leakage,
+    }
     return medium_on(path, segments, face, well, skin_length_radial(height_m), inputs)

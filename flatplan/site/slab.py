@@ -59,5 +59,12 @@ def slab(
     path = Path("linear", units.si(area, "area", "area", "positive"))
     height_m = None if height is None else units.si(height, "length", "height", "positive")
     segments = path.segments(0.0, length_m, rock, fluid, leakage)
-    inputs = {"length": length_m, "area": path.area_factor, "height": height_m, "rock": rock, "fluid": fluid, "leakage": segments[0].leakage}
+    inputs = {
+        "length": length_m,
+        "area": path.area_factor,
+        "height": height_m,
+        "rock": rock,
+        "fluid": fluid,
+        "leakage": segments[0].leakage,
+    }
     return medium_on(path, segments, face, well, None if height_m is None else skin_length_radial(height_m), inputs)

@@ -58,7 +58,14 @@ def spherical(
     share_value = share_of_sphere(share)
     path = Path("spherical", 4.0 * math.pi * share_value, target_m, math.copysign(1.0, well_m - target_m))
     segments = path.segments(0.0, abs(well_m - target_m), rock, fluid, leakage)
-    inputs = {"target_radius": target_m, "well_radius": well_m, "share": share_value, "rock": rock, "fluid": fluid, "leakage": segments[0].leakage}
+    inputs = {
+        "target_radius": target_m,
+        "well_radius": well_m,
+        "share": share_value,
+        "rock": rock,
+        "fluid": fluid,
+        "leakage": segments[0].leakage,
+    }
     return medium_on(path, segments, face, well, skin_length_spherical(share_value, well_m), inputs)
 
 

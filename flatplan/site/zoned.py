@@ -49,7 +49,9 @@ class Zone(Record):
     to_radius: float | None
     leakage: float
 
-    def __init__(self, *, rock: Rock | RockProfile, fluid: Fluid, length: Any = None, area: Any = None, to_radius: Any = None, leakage: Any = 0.0) -> None:
+    def __init__(
+        self, *, rock: Rock | RockProfile, fluid: Fluid, length: Any = None, area: Any = None, to_radius: Any = None, leakage: Any = 0.0
+    ) -> None:
         checked(rock, fluid)
         if to_radius is not None and (length is not None or area is not None):
             raise ValueError("to_radius: stands alone; length and area are for linear flow.")
@@ -175,7 +177,8 @@ def _radii(start: float, zones: Sequence[Zone]) -> list[float]:
             raise ValueError(f"zones[{i}]: radial and spherical flow need to_radius in every zone.")
         if zone.to_radius == before or (ends and (zone.to_radius - before) * (ends[0] - start) < 0.0):
             raise ValueError(
-                f"zones[{i}]: to_radius is {zone.to_radius:g} m after {before:g} m; radii go one way from the target face to the well and none repeats."
+                f"zones[{i}]: to_radius is {zone.to_radius:g} m after {before:g} m; "
+                "radii go one way from the target face to the well and none repeats."
             )
         ends.append(zone.to_radius)
         before = zone.to_radius
