@@ -1,0 +1,68 @@
+"""How far proven bounds are above the truth: the bump's derivatives order by order, and a plan's tail."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+from flint import arb
+
+from flatplan.flat.bounds import log_bump_bounds
+
+from .balls import BallRate, bump_series, precision
+from .jobs import one_bump, with_terms
+from .table import Row
+
+ORDERS = (5, 20, 60, 150)
+GAMMAS = (1.05, 1.25, 1.5, 2.0, 3.0, 4.0, 5.0)
+AIM = 50.0
+_BITS = 600
+
+
+def _log_sizes(gamma: float, sigmas: np.ndarray) -> np.ndarray:
+    """``ln |b^(k)(σ)|`` for the orders and places, shape (orders, places)."""
+    out = np.empty((len(ORDERS), sigmas.size))
+    with precision(_BITS, ORDERS[-1] + 1):
+        g = arb(gamma)
+        height = arb(4) ** g
+        for i, sigma in enumerate(sigmas.tolist()):
+            series = bump_series(arb(sigma), g, height, ORDERS[-1] + 1)
+            for row, k in enumerate(ORDERS):
+                size = abs(series[k])
+                out[row, i] = float((size.mid() * arb(k).fac()).log()) if size > 0 else -math.inf
+    return out
+
+
+def _log_largest(gamma: float, count: int) -> np.ndarray:
+    """``ln max_σ |b^(k)|`` for the orders: a grid, then a finer one around the best place of each order."""
+    sigmas = np.geomspace(0.002, 0.5, count)
+    sizes = _log_sizes(gamma, sigmas)
+    best = sizes.max(axis=1)
+    for row in range(len(ORDERS)):
+        i = int(sizes[row].argmax())
+        around = np.linspace(sigmas[max(i - 1, 0)], sigmas[min(i + 1, count - 1)], 17)
+        best[row] = max(best[row], _log_sizes(gamma, around)[row].max())
+    return best
+
+
+def tightness(quick: bool) -> list[Row]:
+    """Bound over truth."""
+    gammas = GAMMAS[::3] if quick else GAMMAS
+    ratios = np.array([np.exp(log_bump_bounds(g, ORDERS[-1])[list(ORDERS)] - _log_largest(g, 120 if quick else 400)) for g in gammas])
+    rows = []
+    for i, k in enumerate(ORDERS):
+        worst = int(ratios[:, i].argmax())
+        within = bool(np.all((ratios[:, i] >= 1.0) & (ratios[:, i] <= AIM)))
+        span = f"{ratios[:, i].min():.3g} to {ratios[worst, i]:.3g} ×"
+        against = f"flint's largest over σ, γ = {gammas[0]:g} … {gammas[-1]:g}"
+        rows.append(Row(f"bound on bump derivative {k}", against, "", "", span, "", f"1 to {AIM:g} ×", within))
+    for job in (one_bump(0.5, 1.8), with_terms(60, 1.8)):
+        times = job.times(40 if quick else 150)
+        cut, full = BallRate(job, 800), BallRate(job, 800, 3 * job.terms)
+        truth = float(np.abs(np.array([float((a - b).mid()) for a, b in zip(cut.balls(times), full.balls(times), strict=True)])).max())
+        bound = job.plan.certificate.tail["injection_rate"]
+        peak = job.plan.certificate.peak["injection_rate"]
+        ours, other = f"{bound / peak:.1e} of peak", f"{truth / peak:.1e} of peak"
+        what = f"tail bound of rate, {job.name}"
+        rows.append(Row(what, "what flint finds cut off", ours, other, f"{bound / truth:.3g} ×", "", "≥ 1 ×", bound >= truth))
+    return rows
