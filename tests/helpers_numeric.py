@@ -19,7 +19,8 @@ def linear(zones=((LENGTH, 1.0, 1.0, 0.0),), face=None, well=None, resistance=0.
     """A chain of zones (length [m], factor on mobility, factor on capacity, leakage [1/(Pa s)]) from the target face on."""
     ends = np.concatenate([[0.0], np.cumsum([z[0] for z in zones])])
     segments = [
-        Segment(float(a), float(b), MOBILITY * m, CAPACITY * c, AREA, leak) for a, b, (_, m, c, leak) in zip(ends[:-1], ends[1:], zones, strict=True)
+        Segment(float(a), float(b), MOBILITY * m, CAPACITY * c, AREA, leak)
+        for a, b, (_, m, c, leak) in zip(ends[:-1], ends[1:], zones, strict=True)
     ]
     return Medium("linear", tuple(segments), face or Face(), well or Well(), resistance)
 

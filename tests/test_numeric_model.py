@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from itertools import pairwise
 
 import numpy as np
 import pytest
@@ -14,6 +15,8 @@ from hypothesis import strategies as st
 
 from flatplan.numeric import Mesh, Steps, discrete_model, model, run, simulate
 from flatplan.numeric.elements import GRADING, elements, reference_element, sample_points, shapes
+from flatplan.numeric.first_mesh import first_mesh
+from flatplan.numeric.history import panels_of
 from flatplan.site import Face, Fluid, Medium, RockProfile, Segment, Well, slab
 
 ALPHA = MOBILITY / CAPACITY
@@ -32,7 +35,8 @@ def step_answer(mesh, taus):
     found = discrete_model(linear(), mesh)
     panels = Steps(edges=[0.0, 1e3 * T_D], rates=[1.0]).panels.between(0.0, 1e2 * T_D)
     ((_, states),) = found.states(panels, taus * T_D, found.rest())
-    return [found.readouts[c].of(states, 0.0 * states, np.ones(len(taus))) * MOBILITY * AREA / LENGTH for c in ("sandface_pressure", "target_pressure")]
+    scale = MOBILITY * AREA / LENGTH
+    return [found.readouts[c].of(states, 0.0 * states, np.ones(len(taus))) * scale for c in ("sandface_pressure", "target_pressure")]
 
 
 def test_a_graded_mesh_keeps_every_digit():
@@ -48,7 +52,7 @@ def test_the_error_falls_exponentially_with_the_degree():
     taus = np.array([0.02, 0.1])
     errors = [np.max(np.abs(step_answer(Mesh(degree, 3), taus)[1] - slab_series(taus, 0.0))) for degree in (4, 6, 8, 10, 12)]
     assert errors[-1] < 1e-9
-    assert all(after < before / 10.0 for before, after in zip(errors, errors[1:], strict=False)), errors
+    assert all(after < before / 10.0 for before, after in pairwise(errors)), errors
 
 
 @pytest.mark.parametrize("degree", [2, 7, 24])
@@ -82,7 +86,7 @@ def test_elements_fill_the_path_and_keep_the_grading(name):
     found = elements(medium, Mesh(12, 6))
     assert found[0].far == medium.length
     assert found[-1].near == 0.0
-    assert all(a.near == b.far and a.near < a.far for a, b in zip(found, found[1:], strict=False))
+    assert all(a.near == b.far and a.near < a.far for a, b in pairwise(found))
     joins = {medium.length - s.end for s in medium.segments}
     assert joins <= {e.near for e in found}
     z = np.cumsum([0.0, *(((e.far - e.near) / math.sqrt(e.segment.diffusivity)) for e in reversed(found))])
@@ -145,6 +149,24 @@ def test_work_in_parts_is_the_same_work(monkeypatch):
     np.testing.assert_allclose(parts.leaked_volume, whole.leaked_volume, atol=1e-12)
 
 
+def test_the_first_mesh_follows_what_happens():
+    """The element at the sandface is about as thick as pressure spreads in the shortest time: a gap, or that in which a rate varies."""
+    medium = linear()
+    times = np.linspace(0.0, 1.0, 11) * T_D
+
+    def layers(history, at=times):
+        return first_mesh(medium, panels_of(history, 0.0, at[-1]), at, 1e-8).layers
+
+    for speed in (1.0, 1e2, 1e4):
+        thickness = GRADING ** -float(layers(lambda t, speed=speed: np.sin(speed * t / T_D)))
+        assert thickness <= 1.01 / math.sqrt(speed)
+        assert thickness >= 0.05 / math.sqrt(speed)
+    for gap in (1e-2, 1e-4, 1e-6):
+        thickness = GRADING ** -float(layers(Steps(edges=[0.0, 2.0 * T_D], rates=[1.0]), np.append(gap * T_D, times[1:])))
+        assert thickness <= math.sqrt(gap)
+        assert thickness >= 0.3 * math.sqrt(gap)
+
+
 def test_equal_media_share_their_modes():
     assert discrete_model(linear(), Mesh(12, 2)) is discrete_model(linear(), Mesh(12, 2))
     assert discrete_model(linear(), Mesh(12, 2)) is not discrete_model(linear(resistance=1.0), Mesh(12, 2))
@@ -172,9 +194,9 @@ def finite_volumes(medium, rate, times, cells):
     centre = (edges[1:] + edges[:-1]) / 2.0
     width = np.diff(edges)
     segments = [medium.segment_at(x) for x in centre]
-    value = {n: np.array([float(getattr(s, n)(x)) for s, x in zip(segments, centre, strict=True)]) for n in ("storage", "conductance", "leak")}
-    storage, out = value["storage"] * width, value["leak"] * width
-    half = width / 2.0 / value["conductance"]
+    storage = width * [float(s.storage(x)) for s, x in zip(segments, centre, strict=True)]
+    out = width * [float(s.leak(x)) for s, x in zip(segments, centre, strict=True)]
+    half = width / 2.0 / [float(s.conductance(x)) for s, x in zip(segments, centre, strict=True)]
     link = 1.0 / (half[:-1] + half[1:])
     if medium.face.storage:  # what lies behind the face is a cell of its own
         storage, out, link = (np.append(a, b) for a, b in ((medium.face.storage, storage), (medium.face.leak, out), (1.0 / half[0], link)))
@@ -217,9 +239,7 @@ def test_a_general_integrator_agrees(medium):
 
 def test_a_profile_meets_many_uniform_slices():
     """Permeability and porosity that vary along the path, against a chain of short uniform zones of the same medium: second order."""
-    profile = RockProfile(
-        permeability=4e-14 * np.exp([0.0, 1.5, -0.5, 0.3]), porosity=[0.1, 0.2, 0.15, 0.12], compressibility=5e-10, at=[0.0, 50.0, 90.0, 140.0]
-    )
+    profile = RockProfile(4e-14 * np.exp([0.0, 1.5, -0.5, 0.3]), [0.1, 0.2, 0.15, 0.12], 5e-10, at=[0.0, 50.0, 90.0, 140.0])
     medium = slab(length=LENGTH, area=AREA, rock=profile, fluid=Fluid(5e-4, 4.5e-10))
     steps = Steps(edges=np.array([0.0, 0.3, 0.8]) * medium.travel_time, rates=[1e-3, -5e-4])
     times = np.linspace(0.05, 2.0, 20) * medium.travel_time
@@ -249,3 +269,7 @@ def test_a_steep_profile_keeps_its_storage(span, steepness):
     found = discrete_model(Medium("linear", (segment,)), Mesh(12, 2))
     exact = 1e-10 * 100.0 * 50.0 * (np.expm1(3.0 * steepness) / (3.0 * steepness) if steepness else 1.0)
     assert found.assembly.mass[0, 0] == pytest.approx(exact, rel=1e-9)
+    for element in found.assembly.elements:
+        ends = found.medium.length - np.array([element.far, element.near])
+        assert abs(np.diff(np.log(segment.mobility_at(ends)))[0]) <= 2.0
+        assert abs(np.diff(np.log(segment.capacity_at(ends)))[0]) <= 2.0

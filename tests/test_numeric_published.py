@@ -154,7 +154,7 @@ ANNULUS = {
 
 @pytest.mark.parametrize(("held", "ratio"), ANNULUS)
 def test_annulus(held, ratio):
-    """A radius ratio λ, the outer face held and the inner one closed: J1(x) Y0(λx) = Y1(x) J0(λx) at x = r sqrt(λ_n/α), r the inner radius."""
+    """x = r sqrt(decay/α), r the inner radius; the outer face is closed, or held: then J1(x) Y0(λx) = Y1(x) J0(λx)."""
     medium = round_medium("radial", (7.0 * ratio, 7.0), face=Face(held=held))
     found = decays(medium, 7.0)
     np.testing.assert_allclose(found[0 if held else 1 :][:3], ANNULUS[held, ratio], rtol=6e-9)

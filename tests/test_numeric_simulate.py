@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from helpers_numeric import linear, round_medium
@@ -61,8 +63,9 @@ def test_mass_is_conserved(medium, data):
     stored = medium.well.storage * result.channels.bottomhole_pressure
     if not medium.face.held:
         stored = stored + medium.face.storage * result.channels.target_pressure
-    ends = np.unique(np.concatenate([[s.start, s.end] for s in medium.segments] + [medium.length - medium.length * 4.0 ** -np.arange(1.0, 9.0)]))
-    for a, b in zip(ends[:-1], ends[1:], strict=True):
+    graded = medium.length * (1.0 - 4.0 ** -np.arange(1.0, 9.0))
+    ends = np.unique(np.concatenate([graded, *([s.start, s.end] for s in medium.segments)]))
+    for a, b in pairwise(ends):
         at = a + (b - a) * (x + 1.0) / 2.0
         stored = stored + (w * (b - a) / 2.0 * medium.segment_at(0.5 * (a + b)).storage(at)) @ result.pressure(at)
     assert np.abs(stored - result.stored_volume).max() <= 1e-9 * np.abs(result.stored_volume).max() + 1e-18
@@ -102,8 +105,11 @@ def test_a_later_start_gives_the_same_later(medium, data, share):
 @given(st.sampled_from(["linear", "radial", "spherical"]), st.floats(0.1, 10.0), st.floats(0.1, 10.0))
 def test_a_medium_of_another_size_scales(flow, mobility, capacity):
     """k/μ times m and φ c_t times c: with time times c/m, pressures are 1/m of before."""
+
     def made(m, c):
-        return linear(((50.0, m, c, 0.0), (90.0, 3.0 * m, 0.5 * c, 0.0))) if flow == "linear" else round_medium(flow, (80.0, 0.5), ((m, c, 0.0),))
+        if flow == "linear":
+            return linear(((50.0, m, c, 0.0), (90.0, 3.0 * m, 0.5 * c, 0.0)))
+        return round_medium(flow, (80.0, 0.5), ((m, c, 0.0),))
 
     one, other = made(1.0, 1.0), made(mobility, capacity)
     edges, times = np.array([0.0, 0.4, 1.0]), np.linspace(0.1, 2.0, 12)
@@ -139,6 +145,21 @@ def test_steps_that_begin_before_zero_count():
     agree(simulate(medium, early, times), simulate(medium, late, times + 0.5 * medium.travel_time), medium)
 
 
+@pytest.mark.parametrize("index", [1, 2, 3])
+def test_what_cannot_jump_does_not_jump(index):
+    """With wellbore storage the sandface rate, and the rate through a held face, go on from before when the injection rate jumps."""
+    medium = MEDIA[index]
+    steps = Steps(edges=np.array([0.0, 0.3, 0.8]) * medium.travel_time, rates=[2e-3, -1e-3])
+    jump = 0.3 * medium.travel_time
+    out = simulate(medium, steps, [0.0, jump * (1.0 - 1e-9), jump])
+    channels = ("sandface_rate", "target_pressure") if medium.face.held else ("sandface_rate",)
+    for channel in channels:
+        start, before, at = getattr(out, channel)
+        assert start == 0.0
+        assert at == pytest.approx(before, rel=1e-6)
+    np.testing.assert_array_equal(out.injection_rate, [2e-3, 2e-3, -1e-3])
+
+
 # --- going on from a state --------------------------------------------------------------------------
 
 
@@ -154,8 +175,9 @@ def test_going_on_is_the_same_as_going_through(index):
     assert first.state.time == 0.9 * t_d
     assert on.mass_balance < 1e-9
     scale = np.abs(through.bottomhole_pressure - 1e7).max()
-    for name in PRESSURES:
-        size = np.abs(through.target_pressure).max() if medium.face.held and name == "target_pressure" else scale
+    for name in (*PRESSURES, "sandface_rate"):
+        rate = name == "sandface_rate" or (medium.face.held and name == "target_pressure")
+        size = np.abs(getattr(through, name)).max() if rate else scale
         np.testing.assert_allclose(getattr(on.channels, name), getattr(through, name), rtol=0.0, atol=2e-8 * size)
     np.testing.assert_allclose(on.channels.injected_volume, through.injected_volume, rtol=1e-12, atol=1e-15)
     assert "State at" in repr(first.state)
@@ -176,9 +198,9 @@ def test_many_stops_at_once(index):
     for channel in ("target_pressure", "sandface_pressure"):
         answers = result.model.free(channel, result.amplitudes(), after)
         assert answers.shape == (500, 20)
-        k = 317
-        stopped = simulate(medium, lambda t: np.where(t < moments[k], rate(t), 0.0), moments[k] + after, knots=[moments[k]])
-        np.testing.assert_allclose(answers[k], getattr(stopped, channel), rtol=0.0, atol=1e-7 * np.abs(getattr(stopped, channel)).max())
+        stopped = simulate(medium, lambda t: np.where(t < moments[317], rate(t), 0.0), moments[317] + after, knots=[moments[317]])
+        exact = getattr(stopped, channel)
+        np.testing.assert_allclose(answers[317], exact, rtol=0.0, atol=1e-7 * np.abs(exact).max())
 
 
 # --- accuracy that is asked for -----------------------------------------------------------------------
@@ -204,7 +226,7 @@ def test_rounding_right_after_a_jump():
     medium = MEDIA[5]
     steps = Steps(edges=np.array([0.0, 0.3, 0.8]) * medium.travel_time, rates=[2e-3, -1e-3])
     times = (0.3 + np.array([0.0, 1e-9, 1e-8])) * medium.travel_time
-    one, other = (run(medium, steps, times, tolerance=t) for t in (1e-9, 1e-6))
+    one, other = (run(medium, steps, times, tolerance=t) for t in (1e-9, 1e-3))
     assert one.modes != other.modes
     assert np.abs(one.channels.sandface_pressure - other.channels.sandface_pressure).max() < 1e-10 * one.largest_change
 
@@ -219,7 +241,11 @@ def test_a_tolerance_that_is_not_reached_is_said(monkeypatch):
     assert not result.converged
     assert result.refinements == 1
     assert result.relative_error > 1e-8
-    with pytest.raises(ValueError, match=r"^tolerance: got 1e-08, but the error estimate stayed at \S+ of the largest pressure change after 1 refinements; it takes a larger one\.$"):
+    sentence = (
+        r"^tolerance: got 1e-08, but the error estimate stayed at \S+ of the largest pressure change after 1 refinements;"
+        r" it takes a larger one\.$"
+    )
+    with pytest.raises(ValueError, match=sentence):
         simulate(medium, steps, output_times(medium))
 
 
@@ -255,7 +281,7 @@ def test_nothing_happens_without_a_rate():
         ({"times": [-1.0, 1.0]}, ValueError, r"times: got -1 s; output times are zero or more\."),
         ({"times": [np.nan]}, ValueError, r"times: got nan at position 0; every time must be finite\."),
         ({"times": []}, ValueError, r"times: got an empty list; it takes at least one time\."),
-        ({"start": "3 m"}, ValueError, r"start: got '3 m', which is not a pressure; it takes a pressure such as \"21 MPa\", or a number in Pa\."),
+        ({"start": "3 m"}, ValueError, r"start: got '3 m', which is not a pressure; it takes a pressure such as .*"),
         ({"tolerance": 1e-20}, ValueError, r"tolerance: got 1e-20; it takes a share of the largest pressure change from 1e-13 to 0\.1\."),
         ({"tolerance": 0.0}, ValueError, r"tolerance: got 0\.0; it must be above zero\."),
         ({"history": 1e-3}, TypeError, r"history: got float; it takes flatplan\.Steps, a plan, or a function .*"),

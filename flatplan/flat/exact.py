@@ -8,7 +8,7 @@ Parameters are symbols that know their value (`Parameter`): an expression reads 
 | alpha | hydraulic diffusivity k/(φ μ c_t) [m²/s] | alpha_1, alpha_2, … from the target face |
 | T | conductance: A k/μ (linear), 2π h k/μ (radial, times r), 4π share k/μ (spherical, times r²) | T_1, … |
 | lambda | leakage over storage Λ/S [1/s] | lambda_1, … |
-| r_0 | radius of the target face [m] | r_1, … where zone 1, … ends |
+| r_0, r_w | radius of the target face and of the well [m] | r_1, … where zone 1, … ends |
 | l_1, … | linear flow: path coordinate at which zone 1, … ends [m] | |
 | L | length of the path [m] | |
 | kappa, C_f | leak and storage of the target face | |
@@ -85,6 +85,11 @@ class _Symbols:
         self.origin = Parameter("r_0", first.origin) if first.power else sympy.Integer(0)
         self.direction = int(first.direction) if first.power else 1
         self.length = Parameter("L", medium.length)
+        # path coordinate of the sandface; in terms of the well's radius where flow is not linear
+        self.sandface: sympy.Expr = self.length
+        if first.power:
+            well = Parameter("r_w", float(medium.segments[-1].radius(medium.length)))
+            self.sandface = self.direction * (well - self.origin)
         many = len(medium.segments) > 1
         self.zones = []
         start: sympy.Expr = self.origin
@@ -134,7 +139,7 @@ def generating_function(medium: Medium, k: int, kind: str = "pressure") -> sympy
 def at_sandface(medium: Medium, k: int, kind: str) -> sympy.Expr:
     """``φ_k(L)`` or ``F_k(L)``."""
     symbols = _symbols(medium)
-    return _pieces(medium, k, kind)[-1][0].subs(X, symbols.length)
+    return _pieces(medium, k, kind)[-1][0].subs(X, symbols.sandface)
 
 
 def series(medium: Medium, channel: str, terms: int, *, numbers: bool = False) -> sympy.Expr:

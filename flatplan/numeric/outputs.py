@@ -45,9 +45,7 @@ class Outputs:
         return off / scale if scale else off
 
 
-def outputs(
-    model: DiscreteModel, panels: Panels, times: np.ndarray, rates: tuple[np.ndarray, np.ndarray], begin: np.ndarray
-) -> Outputs:
+def outputs(model: DiscreteModel, panels: Panels, times: np.ndarray, rates: tuple[np.ndarray, np.ndarray], begin: np.ndarray) -> Outputs:
     """Every output at ``times`` [s] for the rate in ``panels``, whose values there and just before are ``rates``."""
     channels = {name: np.empty(len(times)) for name in model.readouts}
     stored, leaked = np.empty((2, len(times)))

@@ -268,6 +268,7 @@ def run(
         sandface_pressure=start_pressure + fine.channels["sandface_pressure"],
         target_pressure=fine.channels["target_pressure"] + (0.0 if medium.face.held else start_pressure),
         injected_volume=before + injected,
+        target_kind="rate" if medium.face.held else "pressure",
     )
     return Simulation(
         channels=channels,
