@@ -9,7 +9,7 @@ from flatplan.decide import Limits, assess
 from flatplan.field import steps
 from flatplan.flat import Plan, Target, feedforward
 from flatplan.numeric import confirm
-from flatplan.site import Face, Fluid, Medium, Rock, Well, slab
+from flatplan.site import ConfiningBed, Face, Fluid, Medium, Rock, Well, Zone, slab, zoned
 
 
 def layer(**more: object) -> Medium:
@@ -29,6 +29,32 @@ def plain() -> Plan:
 def held() -> Plan:
     """A rate through a held face."""
     return feedforward(layer(face=Face(held=True)), Target(start="0 L/s").move(to="0.5 L/s", over="2 d"))
+
+
+@cache
+def held_stated() -> Plan:
+    """As `held`, at a stated pressure, with skin and wellbore storage; its last level is not zero."""
+    medium = layer(height="20 m", face=Face(held=True), well=Well(skin=2, storage="0.02 m^3/bar"))
+    return feedforward(medium, Target(start="0 L/s", pressure="21 MPa").move(to="0.5 L/s", over="2 d").hold("1 d"))
+
+
+@cache
+def composite() -> Plan:
+    """Three zones around a well, two of which leak; skin and wellbore storage; up, hold, down."""
+    bed = ConfiningBed(permeability="0.002 mD", thickness="4 m", height="20 m")
+    fluid = Fluid(viscosity="0.5 cP", compressibility="4.5e-10 1/Pa")
+
+    def zone(to_radius: str, permeability: str, porosity: float, leakage: object = 0.0) -> Zone:
+        rock = Rock(permeability=permeability, porosity=porosity, compressibility="5e-10 1/Pa")
+        return Zone(to_radius=to_radius, rock=rock, fluid=fluid, leakage=leakage)
+
+    zones = [zone("60 m", "40 mD", 0.12, bed), zone("4 m", "350 mD", 0.21, bed), zone("0.1 m", "6 mD", 0.08)]
+    well = Well(skin=3, storage="0.02 m^3/bar")
+    medium = zoned(zones, flow="radial", target_radius="250 m", height="20 m", well=well)
+    target = (
+        Target(start="21 MPa").move(to="22 MPa", over="6 d", order=1.8, easing=0.4).hold("4 d").move(to="21.5 MPa", over="5 d", easing=0.5)
+    )
+    return feedforward(medium, target.hold("1 d"))
 
 
 @cache

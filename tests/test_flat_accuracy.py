@@ -119,7 +119,7 @@ def test_hard_jobs_take_more_digits_and_keep_the_accuracy(x, order, easing, digi
     at=st.sampled_from([0.0, 1e5, 3.3e7, 1e9]),
     seed=st.integers(0, 2**16),
 )
-@settings(max_examples=30)
+@settings(max_examples=20)
 def test_no_plan_is_farther_off_than_its_certificate_says(order, easing, slowness, storage, resistance, at, seed):
     """Order, easing, travel time over corner (0.01 to 2), well and start at random."""
     medium = slab(well=fp.Well(storage=storage, resistance=resistance))
@@ -128,6 +128,36 @@ def test_no_plan_is_farther_off_than_its_certificate_says(order, easing, slownes
     plan = fp.feedforward(medium, target)
     times = places(target, 3, seed)
     assert_as_certified(plan, times[times >= at])
+
+
+@given(
+    order=st.floats(1.2, 1.96),
+    easing=st.one_of(st.just(1.0), st.floats(0.02, 0.999)),
+    slowness=st.floats(-0.3, 2.0),
+    seed=st.integers(0, 2**16),
+)
+@settings(max_examples=12)
+def test_rounding_alone_stays_within_its_estimate(order, easing, slowness, seed):
+    """The reference is cut where the plan is cut: what is left is rounding."""
+    medium = slab(well=STORED)
+    width = medium.travel_time * 10.0**slowness
+    target = fp.Target(start=0.0).move(by=1e6, over=width / easing, order=order, easing=easing)
+    plan = fp.feedforward(medium, target)
+    reference = balls.Slab.of(medium)
+    times = places(target, 3, seed)
+    exact = [reference.evaluate(CHANNELS, moves_of(target), float(t), plan.certificate.terms) for t in times]
+    for channel in CHANNELS:
+        for value, e in zip(plan.evaluate(channel, times), exact, strict=True):
+            assert balls.distance(value, e[channel]) <= plan.certificate.rounding[channel], channel
+
+
+@pytest.mark.parametrize("easing", (0.9, 0.97, 0.99, 0.999))
+def test_a_ramp_much_shorter_than_its_bump_is_as_certified(easing):
+    """A difference of two nearly equal bumps: what is lost is in the estimate."""
+    medium = slab(well=STORED)
+    target = fp.Target(start="21 MPa").move(to="22.5 MPa", over=30.0 * medium.travel_time, order=1.8, easing=easing)
+    plan = fp.feedforward(medium, target)
+    assert_as_certified(plan, np.concatenate([places(target, 8, seed=9), np.linspace(0.3, 0.7, 9) * target.end]))
 
 
 @pytest.mark.parametrize("tolerance", (1e-3, 1e-6, 1e-12))

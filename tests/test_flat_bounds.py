@@ -15,14 +15,14 @@ from flint import arb
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from flatplan.flat.bounds import closed_form_radius, log_bump_bounds, log_closed_form
+from flatplan.flat.bounds import _grid, closed_form_radius, log_bump_bounds, log_closed_form
 from flatplan.flat.tail import rise_log_bounds
 
 ORDERS = (0, 1, 2, 3, 5, 10, 20, 40, 60, 100, 150, 160)
 TIGHT = (5, 20, 60, 150)
 
 
-@pytest.mark.parametrize("gamma", (1.001, 1.05, 2.25, 3.5, 4.5, 5.0))
+@pytest.mark.parametrize("gamma", (1.001, 1.05, 2.25, 3.5, 5.0))
 def test_bump_bounds_hold_and_are_within_a_factor_of_50(gamma):
     truth = balls.log_bump_suprema(gamma, list(ORDERS))
     bound = log_bump_bounds(gamma, 160)
@@ -45,6 +45,43 @@ def test_no_derivative_anywhere_is_above_its_bound(gamma, sigma):
     bound = log_bump_bounds(gamma, 160)
     for k, value in enumerate(balls.bump_taylor(arb(place), gamma, 161)):
         assert balls.log_size(value) + math.lgamma(k + 1.0) <= bound[k], (gamma, place, k)
+
+
+@pytest.mark.parametrize("gamma", (1.001, 1.05, 1.7, 3.0, 5.0))
+def test_between_its_nodes_the_grid_is_below_the_function(gamma):
+    """Re h on circles of random cells at random places, 1201 angles: never below what is interpolated from the edges (seed 11)."""
+    log_sigma, theta, lower, upper = _grid(gamma, 1e-3)
+    rng = np.random.default_rng(11)
+    phi = np.linspace(0.0, np.pi, 1201)
+    closest = np.inf
+    for cell in rng.integers(0, log_sigma.size - 1, 25):
+        share = rng.uniform()
+        sigma = math.exp((1.0 - share) * log_sigma[cell] + share * log_sigma[cell + 1])
+        for circle in range(theta.size):
+            z = sigma * (1.0 + theta[circle] * np.exp(1j * phi))
+            least = float(np.min(((z * (1.0 - z)) ** -gamma).real))
+            given_away = least - ((1.0 - share) * lower[cell, circle] + share * upper[cell, circle])
+            assert given_away >= -1e-12 * abs(least), (sigma, theta[circle])
+            closest = min(closest, given_away / max(abs(least), 1e-300))
+    assert closest < 1e-2  # and it does not give much away everywhere
+
+
+@pytest.mark.parametrize("gamma", (1.05, 1.7, 3.0, 5.0))
+def test_bounds_per_order_are_those_of_cauchys_estimate(gamma):
+    """max over σ of min over θ of ``k! (θσ)^-k exp(4^γ - m)``, by a search that shares nothing with the grid [Gevrey1918]."""
+    phi = np.linspace(0.0, np.pi, 301)
+    theta = np.minimum(np.geomspace(0.02, 1.3, 320) * math.tan(math.pi / (2.0 * (gamma + 1.0))), 0.995)
+    orders = np.array([1, 5, 20, 60, 150])
+    largest = np.full(orders.size, -np.inf)
+    for sigma in np.geomspace(1.5e-3, 0.5, 50):
+        z = sigma * (1.0 + theta[:, None] * np.exp(1j * phi)[None, :])
+        least = np.min(((z * (1.0 - z)) ** -gamma).real, axis=1)
+        estimate = np.min(-orders[:, None] * np.log(theta * sigma)[None, :] - least[None, :], axis=1)
+        largest = np.maximum(largest, estimate)
+    cauchy = largest + np.array([math.lgamma(k + 1.0) for k in orders]) + 4.0**gamma
+    bound = log_bump_bounds(gamma, 150)[orders]
+    assert np.all(bound >= cauchy - 0.03)  # the search stops short of the best θ
+    assert np.all(bound <= cauchy + math.log(5.0))
 
 
 @pytest.mark.parametrize("orders", (0, 1, 5, 96, 300, 648))

@@ -350,6 +350,21 @@ def test_an_empty_target_is_refused():
         fp.feedforward(slab(), fp.Target(start="21 MPa").hold("3 d"))
 
 
+def test_a_medium_that_leaks_beyond_the_range_of_a_float_is_refused():
+    medium = slab(leakage=1e-8)
+    with pytest.raises(ValueError, match=r"medium: leaks too much, with sqrt\(Λ/S · travel time\) = 1.58e\+03 where 600 is held"):
+        fp.feedforward(medium, mixed(medium))
+    lossy = slab(leakage=1e-9)  # e^498 from the well to the target face
+    target = fp.Target(start="21 MPa").move(by="1 Pa", over=2.0 * lossy.travel_time)
+    assert fp.feedforward(lossy, target).certificate.met
+
+
+def test_moves_that_cancel_are_refused():
+    target = fp.Target(start="21 MPa").move(by="1 MPa", over="1 d").move(by="-1 MPa", over="1 d", at=0.0)
+    with pytest.raises(ValueError, match="target: its moves cancel and nothing ever changes; there is nothing to plan"):
+        fp.feedforward(slab(), target)
+
+
 @pytest.mark.parametrize("tolerance", (0.0, -1e-9, math.nan, math.inf, "1e-9 d"))
 def test_tolerances_that_are_no_share_are_refused(tolerance):
     with pytest.raises(ValueError, match="^tolerance: got "):

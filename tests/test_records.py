@@ -125,13 +125,13 @@ def test_quoting_cuts_long_values_at_once():
 
 def _channels(n: int) -> Channels:
     names = [field.name for field in dataclasses.fields(Channels)]
-    return Channels(**{name: np.linspace(1.0, 2.0, n) * (i + 1) for i, name in enumerate(names)})
+    return Channels(**{name: np.linspace(1.0, 2.0, n) * (i + 1) for i, name in enumerate(names) if name != "target_kind"})
 
 
 def test_channels_name_every_output_once():
     names = [field.name for field in dataclasses.fields(Channels)]
     assert names[0] == "times"
-    assert sorted(names[1:]) == sorted(CHANNELS)
+    assert sorted(names[1:]) == sorted([*CHANNELS, "target_kind"])
     assert all(kind in KINDS and words for kind, words in CHANNELS.values())
 
 
@@ -140,6 +140,8 @@ def test_channels_show_their_ranges():
     assert repr(_channels(3)).splitlines()[0] == "Channels at 3 times"
     assert len(repr(_channels(3)).splitlines()) == 1 + len(CHANNELS)
     assert repr(_channels(0)) == "Channels at 0 times"
+    held = repr(dataclasses.replace(_channels(3), target_kind="rate"))
+    assert "rate through the target face" in held and "target pressure" not in held
 
 
 def test_channels_are_frozen_and_compare_without_an_array_as_truth():

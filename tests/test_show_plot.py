@@ -15,8 +15,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from matplotlib.figure import Figure
-from show_job import held, job, layer, plain
+from show_job import composite, held, held_stated, job, layer, plain
 
+import flatplan as fp
 from flatplan.decide import Limits
 from flatplan.field import steps
 from flatplan.flat import Target, feedforward
@@ -58,6 +59,11 @@ FIGURES = {
     "plan downwards": lambda system: plot(down(), limits=Limits(min_rate=0), units=system),
     "slight plan": lambda system: plot(slight(), units=system),
     "plan of a held face": lambda system: plot(held(), check=confirm(held()), units=system),
+    "plan of a held face, stated": lambda system: plot(
+        held_stated(), limits=Limits(max_rate="3 m^3/h", max_bottomhole_pressure="213 bar"), check=confirm(held_stated()), units=system
+    ),
+    "plan of a held face, pumped": lambda system: plot(held(), steps=steps(held(), every="6 h"), units=system),
+    "composite profile": lambda system: plot(composite(), kind="profile", units=system),
     "profile": lambda system: plot(job().plan, kind="profile", units=system),
     "profile at moments": lambda system: plot(plain(), kind="profile", times=["6 h", "1 d", "2 d"], units=system),
     "pumped steps": lambda system: plot(job().steps, check=job().steps_check, limits=job().limits, units=system),
@@ -109,6 +115,63 @@ def test_a_medium_is_drawn(geometry):
     assert {"target face: leaky", "sandface and well with resistance and wellbore storage"} <= {
         text.get_text() for text in texts(figure.axes[0])
     }
+
+
+def test_radii_are_read_on_a_logarithmic_axis_where_they_differ_much():
+    axes = drawn("composite profile").axes[0]
+    assert axes.get_xscale() == "log"
+    assert axes.get_xlim() == pytest.approx((250.0, 0.1))
+    assert UNIT.search(axes.get_xlabel())[1] == "m" and axes.get_xlabel().startswith("radius")
+    line = axes.get_lines()[-1]
+    radius = line.get_xdata()
+    assert radius[[0, -1]] == pytest.approx([250.0, 0.1]) and np.all(np.diff(radius) < 0.0)
+    # the steep rise in the tight zone at the well fills a good part of the figure
+    assert np.mean(radius < 4.0) > 0.3
+    near = plot(feedforward(media.medium("radial outward"), Target(start="21 MPa").move(by="5 bar", over="4 d")), kind="profile")
+    assert near.axes[0].get_xscale() == "log"
+    layered = plot(plain(), kind="profile").axes[0]
+    assert layered.get_xscale() == "linear" and layered.get_xlabel().startswith("distance")
+
+
+def test_zone_joins_are_thin_lines():
+    def upright(figure: Figure) -> list[float]:
+        lines = [line for line in figure.axes[0].get_lines() if len(line.get_xdata()) == 2 and np.ptp(line.get_xdata()) == 0.0]
+        assert all(line.get_linewidth() < 1.0 for line in lines)
+        return [float(line.get_xdata()[0]) for line in lines]
+
+    assert upright(drawn("composite profile")) == pytest.approx([60.0, 4.0])
+    assert upright(drawn("profile")) == []
+    varying = feedforward(media.medium("varying rock"), Target(start="21 MPa").move(by="5 bar", over="2 d"))
+    assert upright(plot(varying, kind="profile")) == []
+
+
+def test_the_sketch_names_zones_and_not_pieces():
+    words = " ".join(text.get_text() for text in texts(plot(composite().medium).axes[0]))
+    assert [f"zone {i}" in words for i in (1, 2, 3, 4)] == [True, True, True, False]
+    assert words.count("leaks") == 2
+    varying = [text.get_text() for text in texts(plot(media.medium("varying rock")).axes[0])]
+    assert "α 0.451 to 1.35 m²/s" in varying and not any("zone" in word for word in varying)
+    assert "α 26800 ft²/h" in [text.get_text() for text in texts(plot(layer(), units="field").axes[0])]
+
+
+def test_a_sketch_of_many_zones_stays_readable():
+    zones = [fp.Zone(length=10.0, area=100.0, rock=media.ROCK, fluid=media.WATER, leakage=media.BED) for _ in range(40)]
+    figure = plot(fp.zoned(zones))
+    with house_style():
+        figure.canvas.draw()
+    words_keep_clear_of_one_another(figure)
+
+
+def test_a_held_face_shows_pressures_and_both_rates():
+    figure = drawn("plan of a held face, stated")
+    upper, lower = figure.axes
+    assert (upper.get_ylabel(), lower.get_ylabel()) == ("pressure [bar]", "rate [m³/h]")
+    lines = {line.get_label(): line for line in (*upper.get_lines(), *lower.get_lines())}
+    at = lines["bottomhole"].get_xdata()
+    np.testing.assert_allclose(lines["bottomhole"].get_ydata()[[0, -1]] > 209.9, True)
+    np.testing.assert_allclose(lines["target face, wanted"].get_ydata(), held_stated().target.pressure(at * 86400.0) * 3600.0, atol=1e-9)
+    assert "target, simulated" in lines
+    assert drawn("plan of a held face").axes[0].get_ylabel() == "pressure change [bar]"
 
 
 def every_axis_has_its_unit(figure: Figure, allowed: set[str]) -> None:

@@ -17,7 +17,8 @@ from pathlib import Path
 import media
 import numpy as np
 import pytest
-from show_job import held, job, plain
+import sympy
+from show_job import composite, held, held_stated, job, plain
 
 import flatplan as fp
 from flatplan.decide import Limits, assess
@@ -25,7 +26,9 @@ from flatplan.field import steps
 from flatplan.numeric import confirm
 from flatplan.show import files, report, report_html
 from flatplan.show.cautions import CAUTIONS, IN_THE_FIELD, LEFT_OUT, STOP_WHEN
+from flatplan.show.formula import formula_svg, lines_of
 from flatplan.show.page import element
+from flatplan.show.report_series import coefficients, symbolic_terms
 
 VOID = {"meta", "img", "br", "hr", "link", "input", "col", "area", "base", "embed", "source", "track", "wbr"}
 HOSTILE = "<script>alert(\"1\")</script> & 'it' </title><img src=x onerror=y>"
@@ -90,6 +93,13 @@ def written(name: str) -> str:
         "SI": lambda path: report(j.plan, j.verdict, j.check, j.steps, steps_check=j.steps_check, path=path, units="SI"),
         "bare": lambda path: report(plain(), path=path),
         "hostile": lambda path: report(plain(), path=path, title=HOSTILE, scenario=f"{HOSTILE}\n\nsecond", notes=HOSTILE, every="1 d"),
+        "held, stated": lambda path: report(
+            held_stated(), path=path, **whole(held_stated(), Limits(max_bottomhole_pressure="22 MPa"), "1 h")
+        ),
+        "composite": lambda path: report(
+            composite(), path=path, **whole(composite(), Limits(max_bottomhole_pressure="300 bar"), "12 h", "field")
+        ),
+        "varying": lambda path: report(varying(), path=path),
         "held": lambda path: report(
             held(), assess(held(), Limits(max_rate="3 L/s")), confirm(held()), steps(held(), every="6 h"), path=path
         ),
@@ -100,7 +110,21 @@ def written(name: str) -> str:
         return path.read_text(encoding="utf-8")
 
 
-NAMES = ["everything", "field", "SI", "bare", "hostile", "held"]
+NAMES = ["everything", "field", "SI", "bare", "hostile", "held", "held, stated", "composite", "varying"]
+
+
+def whole(plan, limits, every, system="metric"):
+    """What a page with everything on it takes."""
+    pumped = steps(plan, every=every)
+    return {
+        "verdict": assess(plan, limits, units=system), "check": confirm(plan), "steps": pumped, "steps_check": confirm(pumped),
+        "units": system,
+    }  # fmt: skip
+
+
+@cache
+def varying():
+    return fp.feedforward(media.medium("varying rock"), fp.Target(start="21 MPa").move(to="22.5 MPa", over="3 d"))
 
 
 # --- the page --------------------------------------------------------------------------------------
@@ -119,7 +143,8 @@ def test_the_page_is_valid_and_accessible(name):
     identifiers = [attributes["id"] for _, attributes in page.elements if "id" in attributes]
     assert len(identifiers) == len(set(identifiers)) >= 10
     assert page.all("img") and all(image["alt"] for image in page.all("img"))
-    assert len(page.all("figcaption")) == len(page.all("figure")) == len(page.all("img"))
+    formulas = sum(attributes.get("class") == "formula" for attributes in page.all("div"))
+    assert len(page.all("figcaption")) == len(page.all("figure")) == len(page.all("img")) - formulas
     assert len(page.all("caption")) == len(page.all("table"))
     assert all(head.get("scope") in ("row", "col") for head in page.all("th"))
     rank = [int(tag[1]) for tag, _ in page.elements if re.fullmatch(r"h[1-6]", tag)]
@@ -266,6 +291,121 @@ def test_a_table_too_long_for_a_page_is_thinned_and_says_so(tmp_path):
     assert "Of 2160 rows only one in 2 is printed here" in text
     assert len(cells(text)) == 1080
     assert len(text.encode()) < 1_000_000
+
+
+def test_a_medium_that_leaks_is_told_apart():
+    """Zones, volumes at the end of each move and hold, and the rate that must go on."""
+    plan, page = composite(), Page(written("composite"))
+    rate = plan.medium.equilibrium(0.5e6).rate / 0.158987294928 * 86400.0
+    assert f"After the last step pump on at a steady {rate:.4g} bbl/d for as long as the last level is to be kept" in page.text
+    assert f"After that the level is kept by a steady {rate:.4g} bbl/d" in page.text
+    assert plan.rate([plan.end])[0] == pytest.approx(plan.medium.equilibrium(0.5e6).rate, rel=1e-8)
+    leaked = plan.volumes(["6 d", "10 d", "15 d", "16 d"]).leaked / 0.158987294928
+    rows = re.search(r"Where the fluid is.*?<tbody>(.*?)</tbody>", written("composite"), re.DOTALL)[1]
+    rows = [re.findall(r">([^<]*)</t[hd]>", row) for row in re.findall("<tr>.*?</tr>", rows)]
+    assert [row[0] for row in rows] == ["move 1", "hold", "move 2", "hold"]
+    np.testing.assert_allclose([float(row[-1]) for row in rows], leaked, rtol=1e-3)
+    assert "gone through the confining bed. Injected" in page.text
+    assert "permeability [mD] 40 350 6" in " ".join(re.sub("<.*?>", " ", written("composite")).split())
+    # nothing of it where nothing leaks
+    for name in ("everything", "varying"):
+        assert "pump on" not in written(name) and "Where the fluid is" not in written(name) and "Steady rate" not in written(name)
+
+
+def test_a_level_that_needs_no_rate_is_said_to():
+    medium = media.medium("slab", leakage="leaking")
+    target = fp.Target(start="21 MPa").move(by="5 bar", over="2 d").hold("1 d").move(by="-5 bar", over="2 d")
+    text = Page(report_html(fp.feedforward(medium, target, tolerance=1e-6))).text
+    assert "After the end of the plan nothing needs to be pumped: the plan ends at the level it started from." in text
+
+
+def test_a_stated_pressure_of_a_held_face_is_carried_through():
+    page = Page(written("held, stated"))
+    plan = held_stated()
+    top = confirm(steps(plan, every="1 h")).channels.bottomhole_pressure.max()
+    assert 21.0e6 < top < 22.0e6
+    assert f"Bottomhole pressure reaches {top / 1e5:.3f} bar" in page.text
+    assert "held at 210 bar" in page.text and "✗" not in page.text
+    assert "Bottomhole pressure changes by up to" in Page(written("held")).text
+    assert "bottomhole pressure change at the end [bar]" in Page(written("held")).text
+
+
+def test_a_held_face_beyond_its_limit_as_pumped():
+    """Long steps make the simulated bottomhole pressure differ from the plan's: it is compared with the limit, absolute."""
+    plan = held_stated()
+    check = confirm(steps(plan, every="1 h"))
+    check.channels.bottomhole_pressure[100] = 24.0e6  # as if a step had overshot
+    verdict = assess(plan, Limits(max_bottomhole_pressure="22 MPa"))
+    text = Page(report_html(plan, verdict, steps=steps(plan, every="1 h"), steps_check=check)).text
+    assert verdict.realizable
+    assert "bottomhole pressure as pumped beyond its limit (240.000 bar against 220.000 bar" in text
+
+
+def test_findings_speak_the_units_of_the_page():
+    assert "The sentences quote" not in written("composite")
+    assert assess(plain(), units="field").units == "field" and job().verdict.units == "metric"
+    assert "The sentences quote metric units." in written("field")
+    assert "The sentences quote SI units." in report_html(plain(), assess(plain(), units="SI"))
+
+
+def test_the_path_is_sketched_with_words_for_it():
+    words = [image["alt"] for image in Page(written("composite")).all("img") if image["alt"].startswith("Sketch")]
+    assert len(words) == 1 and "zone 2 from radius 196.9 ft to 13.12 ft" in words[0]
+
+
+def test_varying_rock_is_a_short_table():
+    text = written("varying")
+    rows = re.search(r"The rock at the places.*?<tbody>(.*?)</tbody>", text, re.DOTALL)[1]
+    rows = [[float(v) for v in re.findall(r">([^<]*)</t[hd]>", row)] for row in re.findall("<tr>.*?</tr>", rows)]
+    wanted = np.column_stack([media.PROFILE.at, media.PROFILE.permeability / 9.869233e-16, media.PROFILE.porosity])
+    np.testing.assert_allclose(rows, wanted, rtol=5.01e-4)
+    assert "there is no closed form in symbols" in text
+    long = fp.RockProfile(permeability=lambda x: 4e-14 * (1.0 + x / 100.0), porosity=0.1, compressibility=5e-10)
+    medium = fp.slab(length=120.0, area=5000.0, rock=long, fluid=media.WATER)
+    text = report_html(fp.feedforward(medium, fp.Target(start="21 MPa").move(by="5 bar", over="3 d"), tolerance=1e-6))
+    assert "Of 33 places 13 are printed" in text
+
+
+# --- the series ------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("geometry", ["slab", "radial inward", "radial outward", "spherical"])
+@pytest.mark.parametrize("leakage", ["tight", "leaking"])
+@pytest.mark.parametrize("face", ["sealed", "held"])
+def test_the_formulas_are_the_coefficients(geometry, leakage, face):
+    """What is printed in symbols and in numbers, evaluated, is what the plan uses."""
+    medium = media.medium(geometry, face, "stated resistance", leakage)
+    exact = medium.coefficients("injection_rate", 3)
+    written_out = symbolic_terms(medium)
+    assert bool(written_out) == (leakage == "tight" or geometry == "slab")
+    for k, (expression, lines) in written_out.items():
+        assert float(expression.evalf()) == pytest.approx(exact[k], rel=1e-9, abs=1e-12 * abs(exact[1]))
+        assert 1 <= len(lines) <= 3
+    scale = 1.0 if face == "held" else 1e5 * 3600.0
+    np.testing.assert_allclose(coefficients(medium, "metric"), exact * scale / 86400.0 ** np.arange(4), rtol=1e-12)
+
+
+def test_the_series_can_be_read():
+    page = Page(written("bare"))
+    formulas = [image["alt"] for image in page.all("img") if image.get("style")]
+    assert formulas == ["0", "L*T/alpha", "L^3*T/(6*alpha^2)", "L^5*T/(120*alpha^3)"]
+    c_1 = plain().medium.coefficients("injection_rate", 1)[1] * 1e5 * 3600.0 / 86400.0
+    assert f"c₁ y′ {c_1:.6g}" in " ".join(re.sub("<.*?>", " ", written("bare")).split())
+    assert "hydraulic diffusivity k/(φ μ cₜ), 0.69258 m²/s" in page.text
+    assert "too long for a page; medium.series gives them" in written("composite")
+
+
+def test_what_is_drawn_is_the_formula():
+    """Wide sums break between terms, a term wider than the page has no formula, and a picture is as large as it says."""
+    a = sympy.symbols("a_0:30")
+    lines = lines_of(sum(symbol / (7 * symbol + 3) for symbol in a[:12]))
+    assert 1 < len(lines) <= 3 and not lines[0].startswith("+") and all(line[0] in "+-" for line in lines[1:])
+    assert lines_of(sympy.prod(symbol + 1 for symbol in a)) is None
+    assert lines_of(sympy.log(a[0])) == ["\\ln{\\left(a_{0} \\right)}"]
+    svg, wide, tall = formula_svg("\\dfrac{L^{3} T}{6 \\alpha^{2}}")
+    root = ET.fromstring(svg)
+    assert float(root.attrib["width"].removesuffix("pt")) == pytest.approx(wide, abs=0.01)
+    assert 10.0 < tall < 60.0
 
 
 @pytest.mark.parametrize("geometry", ["radial outward", "spherical", "zoned radial", "varying rock"])

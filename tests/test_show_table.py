@@ -12,13 +12,15 @@ import media
 import numpy as np
 import pandas as pd
 import pytest
-from show_job import held, job, layer, plain
+from show_job import composite, held, held_stated, job, layer, plain
 
 import flatplan as fp
 from flatplan.decide import LIMITS, Limits
+from flatplan.field import steps
 from flatplan.flat import Target
 from flatplan.numeric import Steps, simulate
 from flatplan.show import table
+from flatplan.show.quantities import joins, zones_of
 from flatplan.show.times import even_times
 from flatplan.units import KINDS, label
 
@@ -49,6 +51,9 @@ def things() -> dict[str, object]:
         "target": j.target,
         "limits": j.limits,
         "plan of a held face": held(),
+        "certificate of a held face": held().certificate,
+        "volumes": composite().volumes(["6 d", "16 d"]),
+        "composite medium": composite().medium,
     }
 
 
@@ -258,12 +263,77 @@ def test_a_held_face_has_a_rate_through_it():
     assert "bottomhole pressure change [bar]" in found
 
 
+def test_a_held_face_is_called_a_rate_everywhere():
+    plan = held_stated()
+    names = table(plan.certificate)["channel"].tolist()
+    assert "rate through the target face" in names and not any("target pressure" in name for name in names)
+    row = table(plan.certificate, units="metric").set_index("channel").loc["rate through the target face"]
+    assert (row["unit"], row["peak"]) == ("m³/h", pytest.approx(1.8))
+    line = next(line for line in repr(plan.certificate).splitlines() if "rate through the target face" in line)
+    assert line.endswith("of 1.8 m³/h") and "target pressure" not in repr(plan.certificate)
+    assert "rate through the target face" in repr(plan.at(["1 d"])) and "target pressure" not in repr(plan.at(["1 d"]))
+    pumped = steps(plan, every="6 h")
+    assert plan.at([0.0]).target_kind == simulate(plan.medium, pumped, ["1 d"]).target_kind == "rate"
+    assert plain().at([0.0]).target_kind == plain().certificate.target_kind == "pressure"
+    found = table(pumped, units="metric")
+    np.testing.assert_allclose(found["wanted rate through the target face at step end [m³/h]"].iloc[-1], 1.8, rtol=1e-12)
+    np.testing.assert_allclose(found["expected rate through the target face at step end [m³/h]"].iloc[-1], 1.8, rtol=1e-3)
+    assert found["expected bottomhole pressure at step end [bar]"].between(210.0, 215.0).all()
+    assert "expected bottomhole pressure change at step end [bar]" in table(steps(held(), every="6 h"), units="metric")
+
+
+def test_volumes_have_a_column_each():
+    volumes = composite().volumes(["6 d", "16 d"])
+    found = table(volumes, units="field")
+    assert list(found.columns) == ["time [d]", "injected volume [bbl]", "stored volume [bbl]", "leaked volume [bbl]"]
+    np.testing.assert_allclose(found["leaked volume [bbl]"] * NIST["bbl"], volumes.leaked, rtol=2e-7)
+    np.testing.assert_allclose(found["injected volume [bbl]"], found["stored volume [bbl]"] + found["leaked volume [bbl]"], rtol=1e-12)
+    assert volumes.leaked[1] > 10.0
+
+
+def test_a_composite_medium_lists_its_zones_and_ends():
+    found = table(composite().medium, units="metric").set_index("quantity")
+    assert found["part"].unique().tolist() == ["path", "zone 1", "zone 2", "zone 3", "face", "well"]
+    values = found["value"]
+    assert [values[f"zone {i}: ends at radius"] for i in (1, 2, 3)] == pytest.approx([60.0, 4.0, 0.1])
+    assert [values[f"zone {i}: permeability"] for i in (1, 2, 3)] == pytest.approx([40.0, 350.0, 6.0])
+    assert values["zone 1: leakage"] == pytest.approx(0.002 * NIST["mD"] / (5e-4 * 4.0 * 20.0) * 1e5 * 86400.0, rel=1e-6)
+    assert values["zone 3: leakage"] == 0.0
+    assert table(held().medium).set_index("quantity")["value"]["target face held (1 yes, 0 no)"] == 1.0
+
+
+def test_varying_rock_is_listed_as_it_was_stated():
+    rows = table(media.medium("varying rock"), units="metric")
+    rows = rows[rows["part"] == "profile"].set_index("quantity")["value"]
+    assert len(rows) == 18
+    for at, porosity in zip(media.PROFILE.at, media.PROFILE.porosity, strict=True):
+        assert rows[f"porosity at {at:g} m"] == pytest.approx(porosity, rel=1e-12)
+    np.testing.assert_allclose(rows[::2] * NIST["mD"], media.PROFILE.permeability, rtol=1e-6)
+
+
+@pytest.mark.parametrize("flow", ["linear", "radial"])
+def test_a_zone_of_varying_rock_keeps_its_places(flow):
+    """Zones and the pieces that a varying rock is cut into are told apart, also by the sketch."""
+    extents = [{"length": 40.0, "area": 5000.0}, {"length": 120.0, "area": 5000.0}]
+    if flow == "radial":
+        extents = [{"to_radius": 130.0}, {"to_radius": 10.0}]
+    zones = [fp.Zone(rock=r, fluid=media.WATER, **e) for r, e in zip((media.ROCK, media.PROFILE), extents, strict=True)]
+    medium = fp.zoned(zones, flow=flow, height=20.0, **({"target_radius": 170.0} if flow == "radial" else {}))
+    first, second = zones_of(medium)
+    assert (len(first.segments), len(second.segments)) == (1, 8)
+    assert (first.varies, second.varies) == (False, True)
+    assert joins(medium) == pytest.approx([40.0])
+    np.testing.assert_allclose([x for x, _, _ in second.samples()], 40.0 + media.PROFILE.at, rtol=1e-12)
+    np.testing.assert_allclose([k for _, k, _ in second.samples()], media.PROFILE.permeability, rtol=1e-12)
+    assert table(medium)["quantity"].is_unique
+
+
 # --- refusals --------------------------------------------------------------------------------------
 
 
 def test_what_it_does_not_know():
-    sentence = "^thing: got int; it takes a plan, channels, steps, a verdict, a certificate, a check, a medium, a target or limits.$"
-    with pytest.raises(TypeError, match=sentence):
+    known = "a plan, channels, steps, a verdict, a certificate, a check, a medium, a target, limits or volumes"
+    with pytest.raises(TypeError, match=f"^thing: got int; it takes {known}.$"):
         table(3)
     with pytest.raises(ValueError, match="^units: got 'imperial'; it takes one of 'SI', 'metric', 'field'.$"):
         table(plain(), units="imperial")

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import tomllib
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from importlib import resources
 from pathlib import Path
 from typing import Any
@@ -35,6 +35,8 @@ class Case:
         Length of a pumped step [s].
     units : str
         Unit system of the output.
+    reader : Reader
+        The file, for refusals that only the run can find.
     """
 
     title: str
@@ -45,8 +47,17 @@ class Case:
     tolerance: float
     every: float | None
     units: str
+    reader: Reader = field(repr=False)
+
+    def refused(self, error: Exception) -> CaseError:
+        """A refusal met after reading, carried to the table and key that its first word names."""
+        word = str(error).split(":", 1)[0]
+        section, key = next(((section, word) for section, keys in _LATE.items() if word in keys), ("", word))
+        return self.reader.fail(section, key, str(error))
 
 
+# what is refused only when the plan is made, by table
+_LATE = {"target": ("target",), "plan": ("tolerance",), "pumping": ("every",), "limits": tuple(LIMITS)}
 _TOP = ("title", "scenario", "site", "target", "limits", "plan", "pumping", "output")
 _STAGE = ("to", "by", "over", "order", "easing", "hold")
 
@@ -92,8 +103,10 @@ def parse_case(text: str, name: str) -> Case:
     """The case in ``text``; ``name`` is used in errors."""
     try:
         data = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # TOMLDecodeError is one; a whole number of thousands of digits is another
         raise CaseError(f"{name}: is not valid TOML: {error}.") from None
+    except RecursionError:
+        raise CaseError(f"{name}: is not valid TOML: its brackets are nested too deeply.") from None
     return _case(Reader(text, name), data)
 
 
@@ -121,6 +134,7 @@ def _case(reader: Reader, data: dict) -> Case:
         tolerance=reader.call("plan", lambda tolerance=1e-9: units.si(tolerance, "fraction", "tolerance", "positive"), plan),
         every=every,
         units=system,
+        reader=reader,
     )
 
 

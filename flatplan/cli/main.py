@@ -68,6 +68,13 @@ def main(argv: Sequence[str] | None = None) -> int:
     return _plan(options)
 
 
+def _is_file(folder: Path) -> bool:
+    try:
+        return folder.exists() and not folder.is_dir()
+    except OSError as error:
+        raise ValueError(f"--into: {str(folder)[:60]} cannot be used ({error.strerror}).") from None
+
+
 def _plan(options: argparse.Namespace) -> int:
     from flatplan.cli.case import read_case
     from flatplan.cli.planning import run, write_outputs
@@ -76,17 +83,20 @@ def _plan(options: argparse.Namespace) -> int:
     try:
         case = read_case(options.case)
         folder = Path(options.into) if options.into else Path(f"{Path(options.case).stem}-plan")
-        if folder.exists() and not folder.is_dir():
+        if _is_file(folder):
             raise ValueError(f"--into: {folder} is a file; it takes a folder.")
         say = (lambda words: None) if options.quiet else (lambda words: print(f"  {words} ...", file=sys.stderr))
-        outcome = run(case, say)
+        try:
+            outcome = run(case, say)
+        except ValueError as error:
+            raise case.refused(error) from None
     except ValueError as error:
         print(f"flatplan: {error}", file=sys.stderr)
         return BAD_INPUT
     try:
         written = write_outputs(case, outcome, folder)
     except OSError as error:
-        print(f"flatplan: --into: {folder} cannot be written ({error.strerror}).", file=sys.stderr)
+        print(f"flatplan: --into: {folder} cannot be written ({error.strerror or error}).", file=sys.stderr)
         return BAD_INPUT
     if not options.quiet:
         print(closing(case, outcome, written))

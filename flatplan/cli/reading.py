@@ -50,7 +50,7 @@ class Reader:
         try:
             return maker(**table)
         except (ValueError, TypeError) as error:
-            named = str(error).split(":", 1)[0]
+            named = str(error).split(":", 1)[0].split("[", 1)[0]
             key = next((k for k in table if k == named or named.endswith(k)), next(iter(table), ""))
             raise self.fail(section, key, str(error), index) from None
 

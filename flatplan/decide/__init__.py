@@ -10,7 +10,7 @@
 >>> verdict.realizable
 False
 >>> verdict["max_rate"].remedy
-'4.28 d instead of 3 d would do.'
+'4.281 d instead of 3 d would do.'
 """
 
 from flatplan.decide.assessment import assess

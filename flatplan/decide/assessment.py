@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from flatplan.decide.backflow import BackFlow, back_flow
-from flatplan.decide.extremes import extremes
+from flatplan.decide.extremes import all_extremes, extremes
 from flatplan.decide.findings import Finding, Verdict
 from flatplan.decide.limits import Limits
-from flatplan.decide.physical import physical_findings, stretched_plan
+from flatplan.decide.physical import at_least, physical_findings, stretched_plan
 from flatplan.flat import Plan
 from flatplan.records import of_type, one_of
 from flatplan.units import SYSTEMS, text
@@ -64,7 +64,7 @@ def assess(plan: Plan, limits: Limits | None = None, *, units: str = "metric") -
         _anywhere(plan, say),
         _injection_only(plan, limits, back_flow(plan, low.least, low.least_at), say),
     ]
-    return Verdict(plan, limits, tuple(findings))
+    return Verdict(plan, limits, tuple(findings), units)
 
 
 def _limits_of_a_held_face(plan: Plan, limits: Limits) -> None:
@@ -80,8 +80,13 @@ def _limits_of_a_held_face(plan: Plan, limits: Limits) -> None:
 
 def _order(plan: Plan) -> Finding:
     order = plan.certificate.order
-    reason = f"The largest Gevrey order of the moves is {order:.4g}, below 2: the series converges for every medium and every duration."
-    return Finding("gevrey_order", "Gevrey order", "mathematical", order < 2.0, order, 2.0, 2.0 - order, "fraction", None, reason)
+    if order < 2.0:
+        holds, reason = True, "below 2: the series converges for every medium and every duration."
+    else:
+        holds, reason = False, "not below 2: the series need not converge."
+    reason = f"The largest Gevrey order of the moves is {order:.4g}, {reason}"
+    remedy = "" if holds else "Give every move an order below 2."
+    return Finding("gevrey_order", "Gevrey order", "mathematical", holds, order, 2.0, 2.0 - order, "fraction", None, reason, remedy)
 
 
 def _accuracy(plan: Plan) -> Finding:
@@ -111,15 +116,16 @@ def _accuracy(plan: Plan) -> Finding:
 
 
 def _anywhere(plan: Plan, say: Say) -> Finding:
-    high = extremes(plan, "sandface_pressure")
-    at_face = 0.0 if plan.medium.face.held else plan.target.largest_change
-    top = max(high.largest, at_face, 0.0) + plan.target.rest_pressure
+    places = ["sandface_pressure"] if plan.medium.face.held else ["sandface_pressure", "target_pressure"]
+    seen = [(found.largest, found.largest_at) for found in all_extremes(plan, [(name, 0) for name in places])]
+    change, when = max([(0.0, 0.0), *seen], key=lambda value_and_time: value_and_time[0])
+    top = change + plan.target.rest_pressure
     reason = (
         f"By the maximum principle pressure nowhere in the medium exceeds {say(top, 'pressure')}, "
         "the largest of the start, the sandface and the target."
     )
     return Finding(
-        "pressure_anywhere", "pressure anywhere in the medium", "physical", None, top, None, None, "pressure", high.largest_at, reason
+        "pressure_anywhere", "pressure anywhere in the medium", "physical", None, top, None, None, "pressure", when, reason
     )
 
 
@@ -128,13 +134,14 @@ def _injection_only(plan: Plan, limits: Limits, flow: BackFlow, say: Say) -> Fin
     name, title = "injection_only", "injection alone"
 
     def finding(holds: bool | None, reason: str, remedy: str = "") -> Finding:
-        margin = None if limits.min_rate is None else -flow.peak - limits.min_rate
+        least = 0.0 - flow.peak  # not -0.0
+        margin = None if limits.min_rate is None else least - limits.min_rate
         return Finding(
             name,
             title,
             "physical",
             holds,
-            -flow.peak,
+            least,
             limits.min_rate,
             margin,
             "rate",
@@ -176,7 +183,7 @@ def _injection_only(plan: Plan, limits: Limits, flow: BackFlow, say: Say) -> Fin
     then = back_flow(longer, low.least, low.least_at)
     left = f"{say(then.volume, 'volume')}, at most {say(then.peak, 'rate')}" if then.stretches else "less than the plan's own error"
     remedy = (
-        f"Allow back-flow of {say(flow.peak, 'rate')}; or take {_LONGER:.0f} times as long, which leaves {left}; "
+        f"Allow back-flow of {at_least(flow.peak, 'rate', say)}; or take {_LONGER:.0f} times as long, which leaves {left}; "
         f"or leave the back-flow out and accept that the target settles {say(cost, 'pressure')} too high."
     )
     return finding(False, f"{fact} {amount}", remedy)

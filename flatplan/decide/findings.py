@@ -81,11 +81,14 @@ class Verdict(Record):
     plan : Plan
     limits : Limits
     findings : tuple of Finding
+    units : str
+        Unit system of the findings' sentences: "SI", "metric" or "field".
     """
 
     plan: Plan
     limits: Limits
     findings: tuple[Finding, ...]
+    units: str = "metric"
 
     @property
     def realizable(self) -> bool:

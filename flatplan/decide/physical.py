@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 
+from flatplan import units
 from flatplan.decide.extremes import Extremes, all_extremes, extremes
 from flatplan.decide.findings import Finding
 from flatplan.decide.limits import Limits
@@ -105,20 +106,22 @@ def _remedy(demand: Demand, plan: Plan, limit: float, say: Callable[[float, str]
         return f"Not even {_LONGEST:.0f} times the duration does; lower the level or allow more."
     if len(plan.target.moves) == 1:
         move = plan.target.moves[0]
-        return f"{say(move.duration * factor, 'time')} instead of {say(move.duration, 'time')} would do."
-    times = f"{say(plan.end * factor, 'time')} instead of {say(plan.end, 'time')}"
-    return f"The whole programme in {factor:.3g} times the time would do ({times})."
+        return f"{at_least(move.duration * factor, 'time', say)} instead of {say(move.duration, 'time')} would do."
+    times = f"{at_least(plan.end * factor, 'time', say)} instead of {say(plan.end, 'time')}"
+    return f"The whole programme in {at_least(factor, 'fraction', say)} times the time would do ({times})."
+
+
+def at_least(value: float, kind: str, say: Callable[[float, str], str]) -> str:
+    """A number above zero in words that are not below it when read again: rounded up, so that what they promise holds."""
+    tries = (say((1.0 + more) * value, kind) for more in (0.0, 1e-4, 2e-4, 3e-4, 4e-4, 5e-4))  # up to half of the last of four digits
+    return next((said for said in tries if units.si(said, kind, kind) >= value), say(1.001 * value, kind))
 
 
 def _settled(demand: Demand, plan: Plan) -> float | None:
     """The extreme over the settled levels, which no duration changes; None for changes and rates of a sealed medium."""
     if demand.derivative:
         return None
-    levels, level = [0.0], 0.0
-    for move in plan.target.moves:
-        level += move.change
-        levels.append(level)
-    steady = [plan.medium.equilibrium(v) for v in levels]
+    steady = [plan.medium.equilibrium(v) for v in _levels(plan.target)]
     if demand.channel == "bottomhole_pressure":
         values = [plan.target.rest_pressure + e.bottomhole_change for e in steady]
     elif demand.channel == "injected_volume" and not plan.medium.leaks:
@@ -128,6 +131,15 @@ def _settled(demand: Demand, plan: Plan) -> float | None:
     else:
         return None
     return min(values) if demand.side == "least" else max(values)
+
+
+def _levels(target: Target) -> list[float]:
+    """Changes of level at which everything is at rest for a moment or longer: where no move is under way."""
+    levels = [0.0]
+    for when in sorted({move.end for move in target.moves}):
+        if not any(move.start < when < move.end for move in target.moves):
+            levels.append(sum(move.change for move in target.moves if move.end <= when))
+    return levels
 
 
 def least_stretch(plan: Plan, fits: Callable[[Plan], bool]) -> float | None:

@@ -15,6 +15,7 @@ from flatplan.records import of_type
 from flatplan.site import Medium
 
 _MOST_STEPS = 100_000
+_ROUNDING = 1e-9  # of a step: less than this is no time
 
 
 class PumpedSteps(Steps):
@@ -95,7 +96,7 @@ def steps(plan: Plan, every: Any) -> PumpedSteps:
     """
     of_type(plan, Plan, "plan", "a plan made by feedforward()")
     length = units.si(every, "time", "every", "positive")
-    if length > plan.end:
+    if length > plan.end * (1.0 + _ROUNDING):  # the end is a sum of durations, rounded
         raise ValueError(f"every: got {every!r}, longer than the plan ({units.text(plan.end, 'time')}); it takes at most that.")
     whole = plan.end / length
     if whole > _MOST_STEPS:
@@ -103,8 +104,8 @@ def steps(plan: Plan, every: Any) -> PumpedSteps:
             f"every: got {every!r}, which makes {whole:.3g} steps; it takes at least {units.text(plan.end / _MOST_STEPS, 'time')}."
         )
     # a remainder below rounding is no step of its own
-    count = int(np.floor(whole + 1e-9))
+    count = int(np.floor(whole + _ROUNDING))
     starts = np.arange(count + 1) * length
-    edges = np.append(starts[starts < plan.end - 1e-9 * length], plan.end)
+    edges = np.append(starts[starts < plan.end - _ROUNDING * length], plan.end)
     volumes = np.diff(plan.evaluate("injected_volume", edges))
     return PumpedSteps(edges=edges, rates=volumes / np.diff(edges), plan=plan, every=length)

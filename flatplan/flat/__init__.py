@@ -2,7 +2,7 @@
 
 ``generating`` gives every output as one sequence of coefficients, ``bump``/``rise``/``target`` give the wanted
 history and its derivatives, ``bounds``/``coefficient_bounds``/``tail`` prove where the series may be cut, and
-``plan`` brings them together.
+``planner`` brings them together in a ``plan``.
 
 >>> from flatplan.site import Rock, Fluid, slab
 >>> rock = Rock(permeability="40 mD", porosity=0.12, compressibility="5e-10 1/Pa")
@@ -14,7 +14,8 @@ history and its derivatives, ``bounds``/``coefficient_bounds``/``tail`` prove wh
 """
 
 from flatplan.flat.certificate import Certificate
-from flatplan.flat.plan import Plan, feedforward
+from flatplan.flat.plan import Plan
+from flatplan.flat.planner import feedforward
 from flatplan.flat.target import Move, Target
 
 __all__ = ["Certificate", "Move", "Plan", "Target", "feedforward"]

@@ -6,7 +6,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass
 
 from flatplan import units
-from flatplan.channels import CHANNELS
+from flatplan.channels import described
 from flatplan.records import Record
 
 
@@ -34,6 +34,8 @@ class Certificate(Record):
         Largest size met on the plan's own grid, for each channel (pressures: of the change), SI.
     cancellation : dict of str to float
         Sum of the sizes of the terms over the peak: how much the terms cancel.
+    target_kind : str
+        What "target_pressure" stands for: "pressure", or "rate" for a held face (the rate through it [m³/s]).
     """
 
     order: float
@@ -45,6 +47,7 @@ class Certificate(Record):
     rounding: dict[str, float]
     peak: dict[str, float]
     cancellation: dict[str, float]
+    target_kind: str = "pressure"
 
     @property
     def met(self) -> bool:
@@ -56,7 +59,7 @@ class Certificate(Record):
         yield "radius ρ", units.text(self.radius, "time")
         yield "terms", f"{self.terms}, in {self.digits} digits"
         for channel, tail in self.tail.items():
-            kind, words = CHANNELS[channel]
+            kind, words = described(channel, self.target_kind)
             peak = self.peak[channel] or 1.0
             yield words, f"tail ≤ {tail / peak:.1e}, rounding about {self.rounding[channel] / peak:.1e} of {units.text(peak, kind)}"
         yield "within tolerance", f"{'yes' if self.met else 'NO'} ({self.tolerance:.1e} of each peak)"

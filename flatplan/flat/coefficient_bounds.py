@@ -13,7 +13,8 @@ coefficient in √s, with V the total variation of ln Y and V⁻ its total decre
 
 For one slab Y is constant, V = 0 and the sealed bounds are the coefficients themselves. With leakage the series
 in s is taken at s + λ, λ = max Λ/S (coefficients only grow with Λ); as C(j+i, i) (2j)!/(2j+2i)! ≤ 1/(2i)!
-(and alike for the odd factorials), that multiplies each bound for k ≥ 1 by at most cosh √(λ t_D).
+(Vandermonde: C(2n, 2i) ≥ C(n, i)², and C(2n-1, 2i) ≥ C(n, i) C(n-1, i) for i < n, n = j+i), that multiplies each
+bound for k ≥ 1 by at most cosh √(λ t_D).
 """
 
 from __future__ import annotations

@@ -221,18 +221,10 @@ def _by_integration(symbols: _Symbols, k: int) -> tuple[list[Terms], list[Terms]
     if k in memory:
         return memory[k]
     before = _by_integration(symbols, k - 1)[1] if k else None
-    held = symbols.medium.face.held
-    if k == 0:
-        rate, level = (sympy.Integer(1), sympy.Integer(0)) if held else (symbols.kappa, sympy.Integer(1))
-    else:
-        rate, level = (symbols.store if k == 1 and not held else sympy.Integer(0)), sympy.Integer(0)
+    level, rate = _at_face(symbols, k)
     rates, pressures = [], []
     for i, zone in enumerate(symbols.zones):
-        place, log = zone.start, (symbols.log(zone.start) if i else sympy.Integer(0))
-        # F' = S φ_(k-1) along x; along r the derivative carries the direction
-        source = before[i].times(symbols.direction * zone.conductance / zone.alpha, zone.power) if before else Terms()
-        f = source.from_place(place, log, rate)
-        phi = f.times(symbols.direction / zone.conductance, -zone.power).from_place(place, log, level)
+        f, phi = _integrated(symbols, zone, before[i] if before else None, level, rate)
         rates.append(f)
         pressures.append(phi)
         end_log = symbols.log(zone.end)
@@ -241,30 +233,74 @@ def _by_integration(symbols: _Symbols, k: int) -> tuple[list[Terms], list[Terms]
     return memory[k]
 
 
+def _at_face(symbols: _Symbols, k: int) -> tuple[sympy.Expr, sympy.Expr]:
+    """(φ_k, F_k) at the target face."""
+    zero, one = sympy.Integer(0), sympy.Integer(1)
+    if symbols.medium.face.held:
+        return zero, one if k == 0 else zero
+    return one if k == 0 else zero, {0: symbols.kappa, 1: symbols.store}.get(k, zero)
+
+
+def _integrated(symbols: _Symbols, zone: _Zone, before: Terms | None, level: sympy.Expr, rate: sympy.Expr) -> tuple[Terms, Terms]:
+    """F_k and φ_k in a zone without leakage from φ_(k-1) and the values at its start."""
+    place, log = zone.start, symbols.log(zone.start)
+    # F' = S φ_(k-1) along x; along r the derivative carries the direction
+    source = before.times(symbols.direction * zone.conductance / zone.alpha, zone.power) if before else Terms()
+    f = source.from_place(place, log, rate)
+    return f, f.times(symbols.direction / zone.conductance, -zone.power).from_place(place, log, level)
+
+
 def _by_laplace(symbols: _Symbols, k: int, kind: str) -> list[tuple[sympy.Expr, Any]]:
-    """The k-th Taylor coefficient in s of the Laplace-domain field, zone by zone."""
-    s = sympy.Symbol("s_", nonnegative=True)
-    held = symbols.medium.face.held
-    level, rate = (sympy.Integer(0), sympy.Integer(1)) if held else (sympy.Integer(1), symbols.kappa + symbols.store * s)
+    """The k-th Taylor coefficient in s of the Laplace-domain field, zone by zone.
+
+    Each zone has its own transfer matrix ``Σ M_j s^j``; the field is their product order by order, so that a zone without
+    leakage, whose closed form has a removable singularity at s = 0, brings its polynomials instead of limits.
+    """
+    row = 0 if kind == "pressure" else 1
+    states = [_at_face(symbols, j) for j in range(k + 1)]
     out = []
-    for zone in symbols.zones:
-        q = sympy.sqrt((s + zone.leak) / zone.alpha)
-        inside = _zone_fields(symbols, zone, q, symbols.place(X))
-        p = inside[0][0] * level + inside[0][1] * rate
-        f = inside[1][0] * level + inside[1][1] * rate
-        chosen = p if kind == "pressure" else f
-        if zone.leak == 0 and k == 0:
-            value = sympy.limit(chosen, s, 0)
-        else:
-            value = sympy.diff(chosen, s, k) / math.factorial(k)
-            value = value.subs(s, 0) if zone.leak != 0 else sympy.limit(value, s, 0)
-        out.append((value, None))
-        across = _zone_fields(symbols, zone, q, zone.end)
-        level, rate = (
-            across[0][0] * level + across[0][1] * rate,
-            across[1][0] * level + across[1][1] * rate,
-        )
+    for i in range(len(symbols.zones)):
+        inside = [_transfer(symbols, i, j)[0] for j in range(k + 1)]
+        across = [_transfer(symbols, i, j)[1] for j in range(k + 1)]
+        out.append((_product(inside, states, k)[row], None))
+        states = [_product(across, states, j) for j in range(k + 1)]
     return out
+
+
+def _product(matrices: list, states: list, k: int) -> tuple[sympy.Expr, sympy.Expr]:
+    """Order k of ``Σ M_j s^j`` times ``Σ (φ_j, F_j) s^j``."""
+    pairs = [(matrices[j], states[k - j]) for j in range(k + 1)]
+    return tuple(sympy.Add(*(m[row][0] * level + m[row][1] * rate for m, (level, rate) in pairs)) for row in (0, 1))
+
+
+def _transfer(symbols: _Symbols, i: int, j: int) -> tuple[tuple, tuple]:
+    """M_j of zone i, from its start to the place ``x`` and to its end."""
+    memory = symbols.medium.memory.setdefault("exact transfer", {})
+    if (i, j) in memory:
+        return memory[i, j]
+    zone = symbols.zones[i]
+    places = symbols.place(X), zone.end
+    if zone.leak != 0:
+        s = sympy.Symbol("s_", nonnegative=True)
+        q = sympy.sqrt((s + zone.leak) / zone.alpha)
+        memory[i, j] = tuple(
+            tuple(tuple((sympy.diff(entry, s, j) / math.factorial(j)).subs(s, 0) for entry in row) for row in matrix)
+            for matrix in (_zone_fields(symbols, zone, q, place) for place in places)
+        )
+        return memory[i, j]
+    columns = symbols.medium.memory.setdefault("exact columns", {})
+    zero, one = sympy.Integer(0), sympy.Integer(int(j == 0))
+    if j:
+        _transfer(symbols, i, j - 1)
+    before = columns[i, j - 1] if j else ((None, None), (None, None))
+    by_level = _integrated(symbols, zone, before[0][1], one, zero)
+    by_rate = _integrated(symbols, zone, before[1][1], zero, one)
+    columns[i, j] = by_level, by_rate
+    memory[i, j] = tuple(
+        tuple(tuple(column[kind].expression(place, symbols.log(place)) for column in (by_level, by_rate)) for kind in (1, 0))
+        for place in places
+    )
+    return memory[i, j]
 
 
 def _zone_fields(symbols: _Symbols, zone: _Zone, q: sympy.Expr, r: sympy.Expr) -> tuple:

@@ -9,6 +9,7 @@ one exponential for each time) come from mpmath.
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 from operator import mul
 
 import mpmath
@@ -18,6 +19,7 @@ from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum, low_factors
 
 _GUARD = 64
+ROWS_KEPT = 256  # times whose rows are kept for the next sum at the same times
 
 
 def evaluate_extended(series: SeriesSum, scaled: list[list[mpmath.mpf]], times: np.ndarray, shift: int, digits: int) -> np.ndarray:
@@ -76,12 +78,13 @@ def _add_bumps(totals: list, series: SeriesSum, rise: Rise, terms: int, scaled: 
         elapsed = (times - rise.start) - after
         for at in np.flatnonzero((elapsed > 0.0) & (elapsed < rise.width)):
             left = (mpmath.mpf(float(times[at])) - mpmath.mpf(rise.start) - mpmath.mpf(after)) / mpmath.mpf(rise.width)
-            made = _bump_row(left, rise.gamma, first + len(shared) - 1, bits)
+            # a few orders to spare, so that the outputs of other shifts find the row made
+            made = _bump_row(left, rise.gamma, max(terms + 2, first + len(shared) - 1), bits)
             if made is None:
                 continue
             taylor, doubling, height = made
             for row, weights in enumerate(rows):
-                totals[row][at] += sign * factor * height * _dot(weights, taylor[first:], doubling, first, bits)
+                totals[row][at] += sign * factor * height * _dot(weights, taylor[first : first + len(shared)], doubling, first, bits)
 
 
 def _integers(values: list[mpmath.mpf], bits: int) -> list[tuple[int, int]]:
@@ -106,6 +109,7 @@ def _dot(weights: list[tuple[int, int]], taylor: list[int], doubling: int, first
     return mpmath.ldexp(mpmath.mpf(total), unit - bits)
 
 
+@lru_cache(maxsize=ROWS_KEPT)
 def _bump_row(left: mpmath.mpf, gamma: float, orders: int, bits: int) -> tuple[list[int], int, mpmath.mpf] | None:
     """(scaled Taylor coefficients of b/b(σ) in τ = h 2^m, m, b(σ)) at one place σ; None where b is flat."""
     q0 = left * (1 - left)

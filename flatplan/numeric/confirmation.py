@@ -48,7 +48,7 @@ class Check(Record):
     modes : int
         Number of modes of the model.
     channels : Channels
-        The simulated outputs at the times compared.
+        The simulated outputs at the times compared; for a held face its pressures count from the target's ``pressure=``.
     wanted : ndarray
         The target at those times [Pa, absolute], shape (n,).
     """
@@ -137,7 +137,7 @@ def confirm(subject: Any, *, tolerance: float = 1e-8, allowed: float | None = No
     change = float(target.largest_change)
     if not (math.isfinite(change) and change > 0.0):
         raise ValueError("subject: its target never changes; there is nothing to confirm.")
-    result = run(medium, subject, at, 0.0 if held else target.start, tolerance=tolerance, scale=change)
+    result = run(medium, subject, at, target.rest_pressure if held else target.start, tolerance=tolerance, scale=change)
     at = result.channels.times
     wanted = np.asarray(target.pressure(at), dtype=float)
     simulated = result.channels.target_pressure + (target.start if held else 0.0)

@@ -105,12 +105,18 @@ class Job:
     @cached_property
     def highest_bottomhole(self) -> Peak:
         """Largest bottomhole pressure [Pa, absolute]; as simulated with the steps where that is known."""
-        if self.steps_check is not None and not self.plan.medium.face.held:  # a held face is simulated relative to its pressure
+        if self.steps_check is not None:
             values = self.steps_check.channels.bottomhole_pressure
             i = int(np.argmax(values))
             return Peak(float(values[i]), float(self.steps_check.channels.times[i]))
         found = extremes(self.plan, "bottomhole_pressure")
         return Peak(found.largest + self.plan.target.rest_pressure, found.largest_at)
+
+    @property
+    def keeping_rate(self) -> float | None:
+        """Steady rate that keeps the last level [m³/s]; None in a medium that keeps it by itself."""
+        target, medium = self.plan.target, self.plan.medium
+        return medium.equilibrium(target.level - target.start).rate if medium.leaks else None
 
     @cached_property
     def stop(self) -> Stop | None:

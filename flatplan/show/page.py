@@ -93,8 +93,13 @@ def facts(pairs: Iterable[tuple[Any, Any]], caption: str) -> Markup:
 
 def picture(svg: bytes, alternative: str, caption: str) -> Markup:
     """A figure inside the page; as an image of its own, so that names inside two drawings cannot collide."""
+    return element("figure", image(svg, alternative), element("figcaption", caption))
+
+
+def image(svg: bytes, alternative: str, style: str | None = None) -> Markup:
+    """A drawing inside a line or cell."""
     source = "data:image/svg+xml;base64," + base64.b64encode(svg).decode("ascii")
-    return element("figure", element("img", src=source, alt=alternative), element("figcaption", caption))
+    return element("img", src=source, alt=alternative, style=style)
 
 
 def section(title: str, *children: Any, anchor: str) -> Markup:

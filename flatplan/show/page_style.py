@@ -42,13 +42,16 @@ td small { display: block; color: var(--grey); white-space: nowrap; }
 .plain-word { color: var(--grey); }
 .warning { border: 2px solid var(--bad); padding: .6rem .9rem; margin: 1rem 0; break-inside: avoid; }
 figure { margin: 1rem 0; break-inside: avoid; } figure img { width: 100%; height: auto; display: block; }
+.formula { margin: .2rem 0; } .formula img { display: block; max-width: 100%; }
+table.narrow { width: auto; min-width: 26rem; }
+.series td, .series th { vertical-align: middle; white-space: nowrap; }
 .sign td, .sign th { height: 2.6rem; border: 1px solid var(--line); }
 footer { margin-top: 2.5rem; border-top: 1px solid var(--line); padding-top: .6rem; }
 @page { size: A4; margin: 16mm 15mm 18mm; @bottom-right { content: counter(page) " / " counter(pages); font: 8pt sans-serif; } }
 @media print {
   html { font-size: 9.6pt; }
   body { max-width: none; padding: 0; font-size: 1rem; line-height: 1.42; }
-  .wide { overflow: visible; } table.facts { break-inside: avoid; } caption { break-after: avoid; }
+  .wide { overflow: visible; } table.facts, table.narrow { break-inside: avoid; } caption { break-inside: avoid; break-after: avoid; }
   thead { display: table-header-group; } tr { break-inside: avoid; }
   h2 { margin-top: 1.3rem; } .status li { background: none; border-top: 1px solid var(--line); border-bottom: 1px solid var(--line);
     border-right: 1px solid var(--line); }

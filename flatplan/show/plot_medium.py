@@ -11,83 +11,65 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.patches import Rectangle
-from matplotlib.ticker import FuncFormatter, LogLocator, MaxNLocator, NullFormatter
+from matplotlib.ticker import FixedLocator, FuncFormatter, MaxNLocator
 
 from flatplan import units
-from flatplan.show.axes import plain_ticks
 from flatplan.show.figure import panels
-from flatplan.show.numbers import significant
+from flatplan.show.numbers import reading_unit, significant
+from flatplan.show.path_axis import drawn_at, log_ticks, path_axis, places_along
+from flatplan.show.quantities import ZoneOf, is_radial, zones_of
 from flatplan.show.style import COLOURS, DASHES, GREY, INK
-from flatplan.site import Medium, Segment
+from flatplan.site import Medium
 
 _FILLS = ("#e8eaf1", "#d3dae6", "#f1e8dc", "#dfe9e6", "#ece2ea")
-_MOST_NAMED = 6  # zones named one by one in the sketch
 _POINTS = 41
+_BOX = (0.12, 0.5)  # bottom and height of the zones in the sketch
 
 
 def plot_medium(medium: Medium, system: str, axes: Any) -> Figure:
-    """Zones from the target face (left) to the well (right) above, mobility and storage along the path below."""
+    """Zones from the target face (left) to the well (right) above, mobility and storage along the path below.
+
+    Radii stand on a logarithmic axis, so that the rock near the well can be seen.
+    """
     figure, drawn = panels(axes, (0.9, 1.0, 1.0), 5.0)
-    length = units.unit_factor("length", system)
-    radial = medium.segments[0].power > 0
+    radial = is_radial(medium)
     for panel in drawn:
-        _path_axis(panel, medium, length, radial)
-    _sketch(drawn[0], medium, length, radial)
+        path_axis(panel, medium, system, radial)
+    if axes is None:
+        for panel in drawn[:-1]:
+            panel.set_xlabel("")
+    length = units.unit_factor("length", system)
+    _sketch(drawn[0], medium, length, radial, system)
     # SI mobilities of rock are far from one; the field's own unit reads best in every system
     mobility = units.unit_factor("permeability", "field") / units.unit_factor("viscosity", "field")
     _curve(drawn[1], medium, length, radial, lambda s, x: s.mobility_at(x) / mobility, "mobility k/μ [mD/cP]")
     per = 1e-6 * units.unit_factor("compressibility", system)
     label = units.label("compressibility", system).removeprefix("1")
     _curve(drawn[2], medium, length, radial, lambda s, x: s.capacity_at(x) / per, f"storage φ·cₜ [10⁻⁶{label}]")
-    word = "radius" if radial else "distance from the target face"
-    drawn[2].set_xlabel(f"{word} [{units.label('length', system)}]")
     return figure
 
 
-def _places(segment: Segment, length: float, radial: bool, count: int = _POINTS) -> tuple[np.ndarray, np.ndarray]:
-    """(path coordinates, where they are drawn) along a segment."""
-    if not radial:
-        x = np.linspace(segment.start, segment.end, count)
-        return x, x / length
-    r = np.geomspace(segment.radius(segment.start), segment.radius(segment.end), count)
-    x = np.clip(np.abs(r - segment.origin), segment.start, segment.end)
-    return x, r / length
-
-
-def _path_axis(panel: Axes, medium: Medium, length: float, radial: bool) -> None:
-    """Target face left, well right; radii on a logarithmic axis, so that the rock near the well can be seen."""
-    first, last = medium.segments[0], medium.segments[-1]
-    if not radial:
-        panel.set_xlim(0.0, medium.length / length)
-        panel.xaxis.set_major_locator(MaxNLocator(nbins=8, steps=[1, 2, 2.5, 5, 10]))
-        plain_ticks(panel.xaxis)
-        return
-    panel.set_xscale("log")
-    panel.set_xlim(first.radius(first.start) / length, last.radius(last.end) / length)
-    panel.xaxis.set_major_locator(LogLocator(subs=(1.0, 3.0), numticks=12))
-    panel.xaxis.set_minor_formatter(NullFormatter())
-    panel.xaxis.set_major_formatter(FuncFormatter(_plain))
-
-
-def _sketch(panel: Axes, medium: Medium, length: float, radial: bool) -> None:
+def _sketch(panel: Axes, medium: Medium, length: float, radial: bool, system: str) -> None:
     panel.set_ylim(0.0, 1.0)
     panel.set_yticks([])
     panel.grid(False)
     panel.spines["left"].set_visible(False)
-    many = len(medium.segments) > _MOST_NAMED
-    for i, segment in enumerate(medium.segments):
-        _, at = _places(segment, length, radial, 2)
-        left, right = float(at[0]), float(at[-1])
-        panel.add_patch(Rectangle((left, 0.12), right - left, 0.5, facecolor=_FILLS[i % len(_FILLS)], edgecolor=GREY, linewidth=0.6))
-        if many:
-            continue
+    zones = zones_of(medium)
+    first, last = panel.get_xlim()
+    points = panel.get_window_extent().width * 72.0 / panel.figure.dpi
+    bottom, height = _BOX
+    for i, zone in enumerate(zones):
+        left, right = (float(v) / length for v in drawn_at(medium, np.array([zone.start, zone.end]), radial))
+        panel.add_patch(Rectangle((left, bottom), right - left, height, facecolor=_FILLS[i % len(_FILLS)], edgecolor=GREY, linewidth=0.6))
+        share = np.log(right / left) / np.log(last / first) if radial else (right - left) / (last - first)
+        room = float(share) * points - 8.0
         middle = (left * right) ** 0.5 if radial else 0.5 * (left + right)
-        name = f"zone {i + 1}\n" if len(medium.segments) > 1 else ""
-        panel.text(
-            middle, 0.37, f"{name}α {significant(segment.diffusivity, 3)} m²/s", ha="center", va="center", fontsize="small", color=INK
-        )
-        if segment.leakage:
-            panel.text(middle, 0.66, "leaks", ha="center", va="bottom", fontsize="small", color=COLOURS["sandface"])
+        words = _fitting(_zone_words(zone, i if len(zones) > 1 else None, system), room)
+        if words:
+            panel.text(middle, bottom + 0.5 * height, words, ha="center", va="center", fontsize="small", color=INK)
+        leaks = _fitting(["leaks through the bed", "leaks", "↑"], room)
+        if zone.leakage and leaks:
+            panel.text(middle, bottom + height + 0.03, leaks, ha="center", va="bottom", fontsize="small", color=COLOURS["sandface"])
     ends = (
         (0.0, "left", f"target face: {_face_words(medium)}", "target"),
         (1.0, "right", f"sandface and well{_well_words(medium)}", "rate"),
@@ -97,6 +79,21 @@ def _sketch(panel: Axes, medium: Medium, length: float, radial: bool) -> None:
             panel.get_xlim()[int(x)], ymin=0.06, ymax=0.8, color=COLOURS[colour], linewidth=3.0, linestyle=DASHES["target"], clip_on=False
         )
         panel.text(x, 0.98, words, transform=panel.transAxes, ha=side, va="top", fontsize="small", color=COLOURS[colour])
+
+
+def _zone_words(zone: ZoneOf, number: int | None, system: str) -> list[str]:
+    """What may be written in a zone, from the longest to the shortest."""
+    factor, unit = reading_unit("diffusivity", system)
+    values = [s.diffusivity / factor for s in zone.segments]
+    alpha = f"α {significant(min(values), 3)}{f' to {significant(max(values), 3)}' if zone.varies else ''} {unit}"
+    if number is None:
+        return [alpha]
+    return [f"zone {number + 1}\n{alpha}", f"zone {number + 1}\n{alpha.removesuffix(unit).strip()}", f"zone {number + 1}", f"{number + 1}"]
+
+
+def _fitting(choices: list[str], room: float) -> str:
+    """The first that fits into ``room`` points (a small letter is about 4.8 wide); empty where none does."""
+    return next((words for words in choices if 4.8 * max(len(line) for line in words.splitlines()) <= room), "")
 
 
 def _face_words(medium: Medium) -> str:
@@ -114,21 +111,21 @@ def _well_words(medium: Medium) -> str:
 def _curve(panel: Axes, medium: Medium, length: float, radial: bool, value: Any, words: str) -> None:
     x_all, y_all = [], []
     for segment in medium.segments:
-        x, at = _places(segment, length, radial)
-        x_all.append(at)
+        x = places_along(segment, radial, _POINTS)
+        x_all.append(drawn_at(medium, x, radial) / length)
         y_all.append(np.broadcast_to(np.asarray(value(segment, x), dtype=float), x.shape))
     y = np.concatenate(y_all)
     panel.plot(np.concatenate(x_all), y, color=COLOURS["target"], linestyle=DASHES["target"])
     panel.set_ylabel(words)
+    formatter = FuncFormatter(lambda v, _: significant(v))
     if y.max() > 8.0 * y.min():
         panel.set_yscale("log")
-        panel.yaxis.set_major_formatter(FuncFormatter(_plain))
-        panel.yaxis.set_minor_formatter(NullFormatter())
+        low, high = 0.7 * float(y.min()), 1.4 * float(y.max())
+        panel.set_ylim(low, high)
+        panel.yaxis.set_major_locator(FixedLocator(log_ticks(low, high)))
+        panel.yaxis.set_major_formatter(formatter)
+        panel.yaxis.minorticks_off()
         return
     panel.set_ylim(0.0, 1.15 * float(y.max()))
     panel.yaxis.set_major_locator(MaxNLocator(nbins=5))
-    panel.yaxis.set_major_formatter(FuncFormatter(_plain))
-
-
-def _plain(value: float, position: int) -> str:
-    return f"{value:g}"
+    panel.yaxis.set_major_formatter(formatter)

@@ -10,17 +10,19 @@ from typing import Any
 import numpy as np
 from matplotlib.colors import to_hex
 from matplotlib.figure import Figure
-from matplotlib.ticker import MaxNLocator
 
 from flatplan import units
 from flatplan.flat import Plan
-from flatplan.show.axes import EndLabel, end_labels, plain_ticks, room_for, value_axis
+from flatplan.show.axes import EndLabel, end_labels, room_for, value_axis
 from flatplan.show.figure import panels
 from flatplan.show.numbers import moment
+from flatplan.show.path_axis import drawn_at, path_axis, places_along, reads_by_radius
+from flatplan.show.quantities import joins
+from flatplan.show.style import GREY
 from flatplan.show.table_histories import relative
 
 _MOST_TIMES = 12
-_PLACES = 121
+_PLACES = 161
 # from blue at the start to orange at the end: moments read as an order, and each keeps 4.5 to 1 against white
 _FIRST, _LAST = np.array([27, 47, 138]) / 255.0, np.array([205, 74, 14]) / 255.0
 _TURNS: tuple[Any, ...] = ("-", (0, (6, 1.6)), (0, (2.2, 1.3)), (0, (7, 1.8, 1.4, 1.8)))
@@ -32,16 +34,17 @@ def plot_profile(plan: Plan, times: Any, system: str, axes: Any) -> Figure:
     if len(at) > _MOST_TIMES:
         raise ValueError(f"times: got {len(at)}; a profile is readable with at most {_MOST_TIMES} moments.")
     figure, (panel,) = panels(axes, (1.0,), 3.9)
-    places = np.linspace(0.0, plan.medium.length, _PLACES)
+    factor_length = units.unit_factor("length", system)
+    log = reads_by_radius(plan.medium)
+    count = max(_PLACES // len(plan.medium.segments), 9)
+    places = np.unique(np.concatenate([places_along(s, log, count) for s in plan.medium.segments]))
     pressure = plan.pressure(places, at)
     factor = value_axis(panel, "pressure change" if relative(plan) else "pressure", "pressure", system)
-    length, length_label = units.unit_factor("length", system), units.label("length", system)
-    x = places / length
     room_for(panel, [pressure / factor])
-    panel.set_xlim(0.0, float(x[-1]))
-    panel.set_xlabel(f"distance from the target face towards the well [{length_label}]")
-    panel.xaxis.set_major_locator(MaxNLocator(nbins=8, steps=[1, 2, 2.5, 5, 10]))
-    plain_ticks(panel.xaxis)
+    path_axis(panel, plan.medium, system, log)
+    x = drawn_at(plan.medium, places, log) / factor_length
+    for join in drawn_at(plan.medium, np.array(joins(plan.medium)), log) / factor_length:
+        panel.axvline(float(join), color=GREY, linewidth=0.8, zorder=2)
     labels = []
     for i, when in enumerate(at):
         share = i / max(len(at) - 1, 1)

@@ -18,6 +18,7 @@ from flatplan.show.report_field import cautions_part, footer, left_out_part, rat
 from flatplan.show.report_figures import check_figures, plan_figures
 from flatplan.show.report_inputs import inputs_part
 from flatplan.show.report_job import default_title, job_paragraph, key_numbers, standing
+from flatplan.show.report_series import series_part
 from flatplan.units import SYSTEMS
 
 
@@ -137,7 +138,9 @@ def report_html(
     simulated = check is not None or steps_check is not None or steps is not None
     body = [
         element(
-            "header", element("h1", heading), element("p", "Planned injection rate for a wanted pressure at a distance", class_="small")
+            "header",
+            element("h1", heading),
+            element("p", f"Planned injection rate for a wanted {plan.target.kind} at a distance", class_="small"),
         ),
         section(
             "The job",
@@ -154,6 +157,7 @@ def report_html(
             inputs_part(plan, verdict, units),
             anchor="inputs",
         ),
+        section("The series, to read", series_part(plan, units), anchor="series"),
         section("Certificate of the series", certificate_part(plan, units), anchor="certificate"),
         section(
             "Confirmation",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from flatplan.channels import CHANNELS
+from flatplan.channels import described
 from flatplan.decide import Finding, Verdict
 from flatplan.flat import Plan
 from flatplan.numeric import Check
@@ -30,7 +30,7 @@ def verdict_part(verdict: Verdict | None, span: float, system: str) -> Markup:
         lead = "The plan breaks what is marked ✗. The last column says what would help, with a number where one can be given."
     rows = [_finding_row(f, span, system) for f in verdict.findings]
     head = ("judged", "result", "value", "limit", "why, and what would help")
-    note = "" if system == "metric" else " The sentences quote metric units."
+    note = "" if system == verdict.units else f" The sentences quote {verdict.units} units."
     return joined(
         [
             element("p", lead),
@@ -91,9 +91,7 @@ def certificate_part(plan: Plan, system: str) -> Markup:
     )
     rows = []
     for name in certificate.tail:
-        kind, title = CHANNELS[name]
-        if name == "target_pressure" and plan.medium.face.held:
-            kind, title = "rate", "rate through the target face"
+        kind, title = described(name, certificate.target_kind)
         factor, unit = reading_unit(kind, system)
         label = f"{title}{', change' if kind == 'pressure' else ''} [{unit}]"
         peak, low, high = (getattr(certificate, what)[name] / factor for what in ("peak", "tail", "rounding"))

@@ -5,11 +5,13 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from flatplan.decide import Verdict
+from flatplan.flat import Plan
 from flatplan.numeric import Check
 from flatplan.show.job import Job
 from flatplan.show.numbers import amount, duration
 from flatplan.show.page import Markup, joined, picture
 from flatplan.show.plot import plot
+from flatplan.show.quantities import is_radial, joins, zones_of
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -20,12 +22,16 @@ def plan_figures(job: Job, verdict: Verdict | None, check: Check | None, system:
     plan, target = job.plan, job.plan.target
     history = plot(plan, limits=verdict, steps=job.steps, check=check, units=system)
     drawn = "the rate as pumped in steps over the planned rate" if job.steps is not None else "the planned injection rate"
+    goes = f"the target going from {amount(target.start, target.kind, system)} to {amount(target.level, target.kind, system)}"
+    if plan.medium.face.held:
+        above, below = "bottomhole and sandface pressure", f"the wanted rate through the target face, {goes}, and {drawn}"
+        caption = "Pressures above, rates below; limits dash-dotted, back-flow hatched."
+    else:
+        above, below = f"bottomhole, sandface and wanted target pressure, {goes}", drawn
+        caption = "Pressures above, injection rate below; limits dash-dotted, back-flow hatched."
     alternative = (
-        f"Two panels over {duration(plan.end)}. Above: bottomhole, sandface and wanted target pressure, the target going from "
-        f"{amount(target.start, target.kind, system)} to {amount(target.level, target.kind, system)}. "
-        f"Below: {drawn}, at most {amount(job.highest_rate.value, 'rate', system)}."
+        f"Two panels over {duration(plan.end)}. Above: {above}. Below: {below}, at most {amount(job.highest_rate.value, 'rate', system)}."
     )
-    caption = "Pressures above, injection rate below; limits dash-dotted, back-flow hatched."
     if check is not None:
         caption += " Circles: the target as the independent model has it."
     profile = plot(plan, kind="profile", units=system)
@@ -36,10 +42,25 @@ def plan_figures(job: Job, verdict: Verdict | None, check: Check | None, system:
             _picture(
                 profile,
                 f"Pressure along the {length} from the target face to the well, at several moments of the plan.",
-                "Pressure along the path at several moments. Its slope at the well drives the flow; the target face is on the left.",
+                "Pressure along the path at several moments; the target face is on the left, the well on the right."
+                + (" Thin upright lines: where zones join." if joins(plan.medium) else ""),
             ),
         ]
     )
+
+
+def medium_figure(plan: Plan, system: str) -> Markup:
+    """The sketch of the path."""
+    medium = plan.medium
+    zones = zones_of(medium)
+    extents = [[amount(v, "length", system) for v in zone.extent(is_radial(medium))] for zone in zones]
+    word = "radius" if is_radial(medium) else "distance"
+    listed = "; ".join(f"zone {i} from {word} {a} to {b}" for i, (a, b) in enumerate(extents, start=1))
+    alternative = (
+        f"Sketch of the path from the target face on the left to the well on the right: {listed}. Below it the mobility and the "
+        "storage of the rock along the path."
+    )
+    return _picture(plot(medium, units=system), alternative, "The path, with the mobility and the storage of its rock.")
 
 
 def check_figures(job: Job, check: Check | None, verdict: Verdict | None, system: str) -> Markup:

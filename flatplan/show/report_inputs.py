@@ -4,41 +4,15 @@ from __future__ import annotations
 
 from flatplan.decide import LIMITS, Verdict
 from flatplan.flat import Plan
-from flatplan.show.numbers import amount, clock, duration, level, significant
+from flatplan.show.numbers import amount, clock, level, significant
 from flatplan.show.page import Markup, element, facts, joined, table
-from flatplan.show.quantities import medium_quantities
-
-# what is zero in most wells and faces is said in one word instead
-_WHEN_ZERO = {
-    "leak through the target face": "none",
-    "storage behind the target face": "none",
-    "well resistance, skin included": "none",
-    "wellbore storage": "none",
-}
+from flatplan.show.report_figures import medium_figure
+from flatplan.show.report_medium import medium_part
 
 
 def inputs_part(plan: Plan, verdict: Verdict | None, system: str) -> Markup:
-    """Medium, target and limits as stated."""
-    return joined([_medium(plan, system), _target(plan, system), _limits(verdict, system)])
-
-
-def _medium(plan: Plan, system: str) -> Markup:
-    medium = plan.medium
-    face = "held at its starting pressure" if medium.face.held else "sealed" if medium.face.sealed else "leaking or storing, as below"
-    zones = len(medium.inputs.get("zones", ())) or 1
-    varies = "" if all(s.uniform for s in medium.segments) else ", rock varying along the path"
-    rows: list[tuple[str, str]] = [("flow", f"{medium.flow}, {zones} zone{'s' if zones > 1 else ''}{varies}"), ("target face", face)]
-    if not any(s.leakage for s in medium.segments):
-        rows.append(("leakage out of the layer", "none"))
-    for words, value, kind in medium_quantities(medium):
-        if value == 0.0 and words in _WHEN_ZERO:
-            if not (medium.face.sealed and "face" in words):
-                rows.append((words, _WHEN_ZERO[words]))
-        elif kind == "time":
-            rows.append((words, duration(value)))
-        else:
-            rows.append((words, amount(value, kind, system)))
-    return facts(rows, "The medium between the target face and the well")
+    """Sketch of the path, medium, target and limits as stated."""
+    return joined([medium_figure(plan, system), medium_part(plan, system), _target(plan, system), _limits(verdict, system)])
 
 
 def _target(plan: Plan, system: str) -> Markup:

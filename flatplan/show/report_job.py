@@ -30,7 +30,8 @@ def default_title(job: Job, system: str) -> str:
     factor, unit = reading_unit(target.kind, system)
     numbers = join.join(significant(v / factor, 5) for v in levels)
     where = f"{amount(job.plan.medium.length, 'length', system, 3)} from the well"
-    return f"Injection plan: {what}{numbers} {unit}, {where}, in {duration(job.plan.end)}"
+    at = f" through a face {where}" if target.kind == "rate" else f", {where}"
+    return f"Injection plan: {what}{numbers} {unit}{at}, in {duration(job.plan.end)}"
 
 
 def job_paragraph(job: Job, system: str) -> Markup:
@@ -87,7 +88,10 @@ def _pumped(job: Job, system: str) -> str:
     text = f"To do it, {'; '.join(parts) or 'nothing is pumped'}."
     if len(parts) == 2:
         text += f" That leaves {volume(job.net_volume)} net."
-    return f"{text} Bottomhole pressure reaches {_pressure(job, deep.value, system)} on {moment(deep.when, span)}."
+    if job.keeping_rate:
+        text += f" After that the level is kept by a steady {amount(job.keeping_rate, 'rate', system)}, for as long as it is wanted."
+    what = "Bottomhole pressure changes by up to" if relative(job.plan) else "Bottomhole pressure reaches"
+    return f"{text} {what} {_pressure(job, deep.value, system)} on {moment(deep.when, span)}."
 
 
 def _rate(peak: Peak, span: float, system: str) -> str:
@@ -128,6 +132,10 @@ def key_numbers(job: Job, verdict: Verdict | None, system: str) -> Markup:
         ),
         ("Duration", duration(span), f"travel time of pressure {duration(job.plan.medium.travel_time)}"),
     ]
+    if job.keeping_rate is not None:
+        rows.append(
+            ("Steady rate afterwards", amount(job.keeping_rate, "rate", system), "keeps the last level; it must go on after the last step")
+        )
     if job.stop is not None:
         settled = level(job.stop.highest, job.plan.target.largest_change, "pressure", system)
         rows.append(("Target after a stop", f"≤ {settled}", "once pressures even out, whenever pumping stops"))
@@ -170,7 +178,7 @@ _CLASSES = {True: "good", False: "bad", None: None}
 
 def _beyond_as_pumped(job: Job, verdict: Verdict | None, system: str) -> list[_Standing]:
     """Bottomhole limits that the plan keeps and the steps do not: the verdict is about the smooth plan."""
-    if verdict is None or job.steps_check is None or job.plan.medium.face.held:
+    if verdict is None or job.steps_check is None:
         return []
     stated, found = verdict.limits.stated, []
     values = job.steps_check.channels.bottomhole_pressure

@@ -8,9 +8,10 @@ from flatplan.channels import Channels
 from flatplan.decide import Limits, Verdict
 from flatplan.field import PumpedSteps
 from flatplan.flat import Certificate, Plan, Target
+from flatplan.flat.volumes import Volumes
 from flatplan.numeric import Check, Steps
 from flatplan.records import one_of
-from flatplan.show.table_histories import channels_columns, frame, plan_columns, pumped_columns, steps_columns
+from flatplan.show.table_histories import channels_columns, frame, plan_columns, pumped_columns, steps_columns, volumes_columns
 from flatplan.show.table_records import certificate_table, check_table, limits_table, medium_table, target_table, verdict_table
 from flatplan.site import Medium
 from flatplan.units import SYSTEMS
@@ -18,7 +19,7 @@ from flatplan.units import SYSTEMS
 if TYPE_CHECKING:
     import pandas as pd
 
-_TAKES = "a plan, channels, steps, a verdict, a certificate, a check, a medium, a target or limits"
+_TAKES = "a plan, channels, steps, a verdict, a certificate, a check, a medium, a target, limits or volumes"
 # PumpedSteps are Steps too, so they stand first
 _TABLES: tuple[tuple[type, Any], ...] = (
     (PumpedSteps, lambda thing, system: frame(pumped_columns(thing), system)),
@@ -30,6 +31,7 @@ _TABLES: tuple[tuple[type, Any], ...] = (
     (Medium, medium_table),
     (Target, target_table),
     (Limits, limits_table),
+    (Volumes, lambda thing, system: frame(volumes_columns(thing), system)),
 )
 
 
@@ -38,9 +40,10 @@ def table(thing: Any, *, every: Any = None, units: str = "SI") -> pd.DataFrame:
 
     Parameters
     ----------
-    thing : Plan, PumpedSteps, Steps, Channels, Verdict, Certificate, Check, Medium, Target or Limits
+    thing : Plan, PumpedSteps, Steps, Channels, Verdict, Certificate, Check, Medium, Target, Limits or Volumes
         A plan is read at even times and at its end; steps give the rate table that goes to the field, with the
-        pressures that the independent model expects when each step ends; a verdict gives one row a finding.
+        pressures that the independent model expects when each step ends; a verdict gives one row a finding; a medium
+        gives its path, zones with rock, fluid and leakage, the places of a varying rock, target face and well.
     every : float, str or quantity, optional
         Spacing of a plan's rows [s]; by default a round one that makes at most about 60 rows.
     units : {"SI", "metric", "field"}

@@ -8,9 +8,10 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from flatplan import units
-from flatplan.channels import CHANNELS, Channels
+from flatplan.channels import Channels, described
 from flatplan.field import PumpedSteps
 from flatplan.flat import Plan
+from flatplan.flat.volumes import Volumes
 from flatplan.numeric import Steps, simulate
 from flatplan.show.numbers import column
 from flatplan.show.times import even_times
@@ -62,15 +63,21 @@ def channels_columns(channels: Channels) -> list[Column]:
 def _channel_columns(channels: Channels, plan: Plan | None) -> list[Column]:
     columns = [Column("time", "time", channels.times)]
     for name in _ORDER:
-        kind, words = CHANNELS[name]
-        values = getattr(channels, name)
-        if plan is not None and plan.medium.face.held and name == "target_pressure":
-            # the wanted history of a held face is the rate through it
-            kind, words, values = "rate", "rate through the target face", plan.target.pressure(channels.times)
-        elif plan is not None and relative(plan) and kind == "pressure":
+        kind, words = described(name, channels.target_kind)
+        if plan is not None and relative(plan) and kind == "pressure":
             words = f"{words} change"
-        columns.append(Column(words, kind, values))
+        columns.append(Column(words, kind, getattr(channels, name)))
     return columns
+
+
+def volumes_columns(volumes: Volumes) -> list[Column]:
+    """Injected, stored and leaked volume since the start."""
+    return [
+        Column("time", "time", volumes.times),
+        Column("injected volume", "volume", volumes.injected),
+        Column("stored volume", "volume", volumes.stored),
+        Column("leaked volume", "volume", volumes.leaked),
+    ]
 
 
 def steps_columns(steps: Steps) -> list[Column]:
@@ -89,13 +96,13 @@ def steps_columns(steps: Steps) -> list[Column]:
 def pumped_columns(steps: PumpedSteps) -> list[Column]:
     """As `steps_columns`, with the pressures to expect when each step ends."""
     expected = expected_at_step_ends(steps)
-    columns = [*steps_columns(steps), Column("expected bottomhole pressure at step end", "pressure", expected.bottomhole_pressure)]
-    if steps.medium.face.held:
-        return columns
+    kind, words = described("target_pressure", expected.target_kind)
+    change = " change" if relative(steps.plan) else ""
     return [
-        *columns,
-        Column("expected target pressure at step end", "pressure", expected.target_pressure),
-        Column("wanted target pressure at step end", "pressure", steps.target.pressure(steps.edges[1:])),
+        *steps_columns(steps),
+        Column(f"expected bottomhole pressure{change} at step end", "pressure", expected.bottomhole_pressure),
+        Column(f"expected {words} at step end", kind, expected.target_pressure),
+        Column(f"wanted {words} at step end", kind, steps.target.pressure(steps.edges[1:])),
     ]
 
 

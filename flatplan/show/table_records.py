@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from flatplan import units
-from flatplan.channels import CHANNELS
+from flatplan.channels import described
 from flatplan.decide import LIMITS, Limits, Verdict
 from flatplan.flat import Certificate, Target
 from flatplan.numeric import Check
@@ -55,7 +55,8 @@ def verdict_table(verdict: Verdict, system: str) -> pd.DataFrame:
 def certificate_table(certificate: Certificate, system: str) -> pd.DataFrame:
     """One row a channel: peak, proven tail, estimated rounding, and their sum as a share of the peak."""
     names = list(certificate.tail)
-    kinds = [CHANNELS[name][0] for name in names]
+    described_as = [described(name, certificate.target_kind) for name in names]
+    kinds = [kind for kind, _ in described_as]
     rows = {
         what: [_shown(getattr(certificate, what)[name], kind, system) for name, kind in zip(names, kinds, strict=True)]
         for what in ("peak", "tail", "rounding")
@@ -67,7 +68,7 @@ def certificate_table(certificate: Certificate, system: str) -> pd.DataFrame:
             Column(
                 "channel",
                 None,
-                [CHANNELS[name][1] + (" (change)" if kind == "pressure" else "") for name, kind in zip(names, kinds, strict=True)],
+                [words + (" (change)" if kind == "pressure" else "") for kind, words in described_as],
             ),
             Column("peak", None, rows["peak"]),
             Column("tail bound", None, rows["tail"]),
@@ -111,8 +112,12 @@ def check_kind(check: Check) -> str:
 
 
 def medium_table(medium: Medium, system: str) -> pd.DataFrame:
-    """Every stated and derived quantity of a medium with its unit."""
-    return frame(_quantities(medium_quantities(medium), system), system)
+    """Every stated and derived quantity of a medium with its part and unit."""
+    rows = medium_quantities(medium, system)
+    return frame(
+        [Column("part", None, [row.part for row in rows]), *_quantities([(row.words, row.value, row.kind) for row in rows], system)],
+        system,
+    )
 
 
 def _quantities(rows: Sequence[tuple[str, Any, str | None]], system: str) -> list[Column]:

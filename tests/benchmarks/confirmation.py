@@ -21,7 +21,7 @@ from skfem.models.poisson import laplace, mass
 import flatplan as fp
 
 from .jobs import CHANGE, Job, one_bump
-from .table import Row, by_turns, faster, seconds_of
+from .table import Row, by_turns, faster
 
 AIM = 20.0
 FLOOR = 1e-13  # least error that scipy's integrators follow with profit
@@ -127,16 +127,6 @@ class _AtError:
         return cls(t1 * (e1 / error) ** power, e1, e1 > error)
 
 
-def _runs(model: Callable[[float], float], fineness: Sequence[float]) -> list[tuple[float, float]]:
-    """(error, seconds) of each."""
-    out = []
-    for value in fineness:
-        reached: list[float] = []
-        spent = seconds_of(lambda value=value, reached=reached: reached.append(model(value)))
-        out.append((reached[0], spent))
-    return out
-
-
 def confirmation(quick: bool) -> list[Row]:
     """Confirming one plan, at equal error: at our model's own estimate, and at the error it has, as far as others can follow.
 
@@ -144,14 +134,14 @@ def confirmation(quick: bool) -> list[Row]:
     """
     job = one_bump(0.5, 1.8)
     wanted = _Wanted(job)
-    fresh = [one_bump(0.5, 1.8).plan for _ in range(12)]  # each with a medium of its own: nothing is remembered
-    (ours,) = by_turns([lambda: fp.confirm(fresh.pop())], 5 if quick else 9, shortest=0.0)
+    repeats = 1 if quick else 4
+    fresh = [one_bump(0.5, 1.8).plan for _ in range(repeats + 1)]  # each with a medium of its own: nothing is remembered
     check = fp.confirm(job.plan)
     estimate, found = check.grid_error / CHANGE, check.target_error / CHANGE
     lowest = max(found, FLOOR)
     levels = ((estimate, f"error {estimate:.0e}, our own estimate"), (lowest, f"error {lowest:.0e} (ours: {found:.0e})"))
     close = (1e-10, 1e-12, 3e-14)
-    cells = (400, 1600) if quick else (3200, 12800)
+    cells = (400, 1600) if quick else (1600, 6400)
     others = (
         ("scipy Radau, elements of degree 8", lambda v: elements_in_time(wanted, v, "Radau"), close, AIM),
         ("scipy BDF, elements of degree 8", lambda v: elements_in_time(wanted, v, "BDF"), close, AIM),
@@ -159,7 +149,17 @@ def confirmation(quick: bool) -> list[Row]:
         ("scipy BDF, finite volumes", lambda v: finite_volumes(wanted, v, "BDF"), cells, AIM),
         ("scikit-fem P2, Crank–Nicolson", lambda v: finite_elements(wanted, v), (40, 80) if quick else (80, 160), None),
     )
-    runs = [_runs(model, fineness) for _, model, fineness, _ in others]
+    models = [(row, model, value) for row, (_, model, fineness, _) in enumerate(others) for value in fineness]
+    errors = [0.0] * len(models)
+
+    def side(i: int) -> None:
+        errors[i] = models[i][1](models[i][2])
+
+    sides = [lambda i=i: side(i) for i in range(len(models))]
+    ours, *seconds = by_turns([lambda: fp.confirm(fresh.pop()), *sides], repeats, budget=90.0, shortest=0.0)
+    runs: list[list[tuple[float, float]]] = [[] for _ in others]
+    for (row, _, _), error, spent in zip(models, errors, seconds, strict=True):
+        runs[row].append((error, spent))
     rows = []
     for error, label in levels:
         for (name, _, _, least), measured in zip(others, runs, strict=True):

@@ -23,7 +23,7 @@ _IMPORTS = {
 def imports(quick: bool) -> list[Row]:
     """Seconds to import, each in a fresh interpreter, by turns."""
     found: dict[str, list[float]] = {name: [] for name in _IMPORTS}
-    for _ in range(3 if quick else 9):
+    for _ in range(2 if quick else 9):
         for name, line in _IMPORTS.items():
             script = f"import time; t = time.process_time(); {line}; print(time.process_time() - t)"
             done = subprocess.run([sys.executable, "-c", script], capture_output=True, text=True, check=True)
@@ -38,7 +38,7 @@ def imports(quick: bool) -> list[Row]:
 
 def million(quick: bool) -> list[Row]:
     """``plan.at`` on a million times: seconds, and peak memory over the size of what it returns."""
-    count = 200_000 if quick else 1_000_000
+    count = 100_000 if quick else 1_000_000
     rows = []
     for job in (one_bump(0.5, 1.8), with_terms(60, 1.8)):
         times = job.times(count)

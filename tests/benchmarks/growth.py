@@ -16,13 +16,13 @@ _SLACK = 0.1  # an exponent is measured to about this
 
 def growth(quick: bool) -> list[Row]:
     """Exponents of the rate at many times, of making a plan, and of a medium's coefficients."""
-    repeats = 3 if quick else 7
+    repeats = 2 if quick else 5
     return [
-        _times(repeats, (4_000, 16_000, 64_000) if quick else (4_000, 16_000, 64_000, 256_000)),
-        _moves(repeats, (2, 8, 32) if quick else (2, 4, 8, 16, 32, 64)),
-        _making(repeats, (2, 8, 32) if quick else (2, 4, 8, 16, 32, 64)),
+        _times(repeats, (4_000, 32_000) if quick else (4_000, 16_000, 64_000, 256_000)),
+        _moves(repeats, (2, 16) if quick else (2, 8, 32)),
+        _making(repeats, (2, 16) if quick else (2, 8, 32)),
         _terms(repeats),
-        _zones(repeats, (4, 32, 256) if quick else (4, 16, 64, 256, 1024)),
+        _zones(repeats, (4, 64, 256) if quick else (4, 16, 64, 256, 1024)),
     ]
 
 

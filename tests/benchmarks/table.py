@@ -12,6 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 EXTRAPOLATED = "≈"  # marks a figure that was not measured in full
+_SLOW = 0.1  # seconds from which a first call counts like any other
 
 
 @dataclass(frozen=True)
@@ -65,13 +66,13 @@ def by_turns(sides: Sequence[Callable[[], object]], repeats: int, budget: float 
     list of float
         Processor seconds per call.
     """
-    first = [_turn(side, 1) for side in sides]  # warms caches; counts only where there is time for no more
+    first = [_turn(side, 1) for side in sides]  # warms caches, which matters where little time is spent
     calls = [max(1, math.ceil(shortest / max(seconds, 1e-9))) for seconds in first]
     cost = sum(max(seconds, shortest) for seconds in first)
     turns = min(repeats, int(budget / cost))
     if turns < 1:
         return first
-    found: list[list[float]] = [[] for _ in sides]
+    found: list[list[float]] = [[seconds] if seconds > _SLOW else [] for seconds in first]
     for _ in range(turns):
         for seconds, side, count in zip(found, sides, calls, strict=True):
             seconds.append(_turn(side, count))
@@ -84,11 +85,6 @@ def _turn(side: Callable[[], object], calls: int) -> float:
     for _ in range(calls):
         side()
     return (time.process_time() - begin) / calls
-
-
-def seconds_of(side: Callable[[], object]) -> float:
-    """Processor seconds of a single call."""
-    return _turn(side, 1)
 
 
 def exponent(sizes: Sequence[float], seconds: Sequence[float]) -> float:

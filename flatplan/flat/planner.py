@@ -1,0 +1,262 @@
+"""From a medium and a target to a plan: how many terms, in what precision, and how far off at most."""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from flatplan import units
+from flatplan.channels import CHANNELS
+from flatplan.flat.bump import MOST_ORDERS
+from flatplan.flat.certificate import Certificate
+from flatplan.flat.extended import evaluate_extended
+from flatplan.flat.generating import scaled_coefficients
+from flatplan.flat.plan import SERIES_NAME, Plan
+from flatplan.flat.precise import precise_scaled
+from flatplan.flat.rise import Rise
+from flatplan.flat.summation import SeriesSum
+from flatplan.flat.tail import gevrey_radius, tail_table
+from flatplan.flat.target import Target
+from flatplan.records import of_type
+from flatplan.site import Medium
+
+# Channels whose tails decide the number of terms: (channel, derivative of it). The derivative of the rate
+# is there so that the extremes of the plan can be located on it.
+_DECIDING = (
+    ("injection_rate", 0),
+    ("sandface_rate", 0),
+    ("bottomhole_pressure", 0),
+    ("sandface_pressure", 0),
+    ("injection_rate", -1),
+    ("injection_rate", 1),
+)
+# Orders bounded one by one before the closed form takes over.
+_FIRST_ORDERS = 96
+# Rounding of the double path, in units of 2^-53 times the sum of the sizes of the terms: measured, see
+# tests/test_flat_accuracy.py, where it is compared with ball arithmetic.
+_ROUNDING_UNITS = 40.0
+_ROUNDING_UNITS_PER_TERM = 2.5  # the coefficients' own error grows with their order
+_UNIT = 2.0**-53
+# Leakage damps a steady change along the path by up to e to this power: what a double holds.
+_MOST_DAMPING = 600.0
+
+
+def feedforward(medium: Medium, target: Target, *, tolerance: float = 1e-9) -> Plan:
+    """The injection rate that makes the target face follow ``target``, in closed form.
+
+    Parameters
+    ----------
+    medium : Medium
+    target : Target
+        With at least one move.
+    tolerance : float
+        Largest distance from the exact plan, relative to each channel's peak, from 1e-13 to 0.1.
+
+    Returns
+    -------
+    Plan
+
+    Raises
+    ------
+    TypeError
+        A medium or target of another type.
+    ValueError
+        An empty target, a tolerance out of range, or a job whose series needs more terms or digits than
+        are held; the sentence says which and what would do.
+
+    Notes
+    -----
+    Differential flatness of the diffusion equation [FliessLevineMartinRouchon1995]_
+    [LarocheMartinRouchon2000]_: every output is ``Σ c_k y^(k)`` with ``y`` the pressure at the target face.
+    The cut is proven by `flatplan.flat.tail`.
+    """
+    of_type(medium, Medium, "medium", "a medium made by slab() or its sisters")
+    of_type(target, Target, "target", "a Target")
+    damping = math.sqrt(max(s.leakage / s.least_capacity for s in medium.segments) * medium.travel_time)
+    if damping > _MOST_DAMPING:
+        raise ValueError(
+            f"medium: leaks too much, with sqrt(Λ/S · travel time) = {damping:.3g} where {_MOST_DAMPING:g} is held; "
+            "a pressure change is lost long before the target face."
+        )
+    if not target.moves:
+        raise ValueError('target: has no move; add at least one, such as .move(to="22.5 MPa", over="3 d").')
+    if target.largest_change <= 1e-12 * max(abs(m.change) for m in target.moves):
+        raise ValueError("target: its moves cancel and nothing ever changes; there is nothing to plan.")
+    if medium.face.held != (target.kind == "rate"):
+        wants = 'a rate (start="0 L/s")' if medium.face.held else 'a pressure (start="21 MPa")'
+        raise ValueError(f"target: its start is a {target.kind}, but for this target face it takes {wants}.")
+    if medium.face.held and target.start != 0.0:
+        raise ValueError(
+            f"target: starts at {units.text(target.start, 'rate')}; the rate through a held face is counted from the equilibrium "
+            "in which the plan starts, so it takes 0."
+        )
+    value = units.si(tolerance, "fraction", "tolerance", "positive")
+    if not 1e-13 <= value <= 0.1:
+        raise ValueError(f"tolerance: got {tolerance!r}; it takes a share of the peak from 1e-13 to 0.1.")
+    return _Planner(medium, target, value).plan()
+
+
+class _Planner:
+    """Finds terms, peaks and precision together: each depends on the others."""
+
+    def __init__(self, medium: Medium, target: Target, tolerance: float) -> None:
+        self.medium, self.target, self.tolerance = medium, target, tolerance
+        self.rises = target.rises
+        self.grid = _grid(target)
+        self.overlap = _largest_overlap(self.rises)
+        # Equal rises (but for when and how much) share their tails.
+        self.tails: dict[tuple[float, float, float, float], np.ndarray] = {}
+
+    def plan(self) -> Plan:
+        terms = tuple(8 for _ in self.rises)
+        for _ in range(16):
+            sums = SeriesSum(self.rises, terms, self.medium.travel_time)
+            peak, size = self._peaks(sums)
+            needed = tuple(self._terms(rise, peak) for rise in self.rises)
+            if all(n <= have for n, have in zip(needed, terms, strict=True)) and self._drowned(sums, peak, size):
+                # a peak made of rounding is too large: the terms it allows are too few
+                peak = self._precise_peaks(sums, size)
+                needed = tuple(self._terms(rise, peak) for rise in self.rises)
+            if all(n <= have for n, have in zip(needed, terms, strict=True)):
+                break
+            terms = tuple(max(n, have) for n, have in zip(needed, terms, strict=True))
+        else:
+            raise ValueError("target: the number of terms did not settle; state a larger tolerance.")
+        return self._certified(sums, peak, size)
+
+    def _rows(self, sums: SeriesSum, *, sizes: bool = False) -> dict[tuple[str, int], np.ndarray]:
+        most = max(sums.terms)
+        out = {}
+        for shift in (0, -1, 1):
+            names = [name for name, s in _DECIDING if s == shift]
+            scaled = np.array([scaled_coefficients(self.medium, name, most) for name in names])
+            values = sums.evaluate(scaled, self.grid, shift, sizes=sizes)
+            out.update({(name, shift): row for name, row in zip(names, values, strict=True)})
+        return out
+
+    def _peaks(self, sums: SeriesSum) -> tuple[dict, dict]:
+        peak = {key: float(np.abs(row).max()) for key, row in self._rows(sums).items()}
+        size = {key: float(row.max()) for key, row in self._rows(sums, sizes=True).items()}
+        return peak, size
+
+    def _drowned(self, sums: SeriesSum, peak: dict, size: dict) -> bool:
+        """Whether the rounding of double precision reaches a thousandth of a peak, and more digits are held."""
+        lost = (_ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)) * _UNIT
+        held = all(segment.uniform for segment in self.medium.segments)
+        return held and any(lost * size[key] > 1e-3 * peak[key] for key in _DECIDING)
+
+    def _precise_peaks(self, sums: SeriesSum, size: dict) -> dict:
+        """The peaks at fewer places (so a little low, on the safe side), in as many digits as it takes to see them."""
+        parts: list[np.ndarray] = []
+        for rise in self.rises:
+            live = 0.5 - math.sqrt(0.25 - (4.0**rise.gamma + 40.0) ** (-1.0 / rise.gamma))  # where the bump is above e^-40
+            parts.extend(start + rise.width * np.linspace(live, 1.0 - live, 25) for start, _ in rise.corners)
+        times = np.unique(np.concatenate([self.target.knots, *parts]))
+        digits = 32
+        while True:
+            peak = {}
+            for shift in (0, -1, 1):
+                names = tuple(name for name, s in _DECIDING if s == shift)
+                exact = precise_scaled(self.medium, names, max(sums.terms), math.ceil(digits * math.log2(10.0)))
+                assert exact is not None  # `_drowned` asked
+                values = evaluate_extended(sums, exact, times, shift, digits)
+                peak.update({(name, shift): float(np.abs(row).max()) for name, row in zip(names, values, strict=True)})
+            if all(size[key] * 10.0**-digits <= 1e-4 * peak[key] for key in _DECIDING) or digits > 500:
+                return peak
+            digits *= 2
+
+    def _tail(self, rise: Rise, allowed: np.ndarray) -> np.ndarray:
+        """Tail bounds of a rise for the deciding channels, with more orders bounded one by one until some cut is allowed."""
+        key = (rise.width, rise.ramp, rise.gamma, abs(rise.weight))
+        orders = _FIRST_ORDERS
+        while True:
+            table = self.tails.get(key)
+            if table is None or table.shape[1] <= orders:
+                table = self.tails[key] = tail_table(self.medium, rise, _DECIDING, orders)
+            # the closed form's rest should be negligible, or the cut comes later than it need
+            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_ORDERS - 2:
+                return table
+            orders = min(2 * orders, MOST_ORDERS - 2)
+
+    def _held_tail(self, rise: Rise) -> np.ndarray:
+        return self.tails[rise.width, rise.ramp, rise.gamma, abs(rise.weight)]
+
+    def _terms(self, rise: Rise, peak: dict) -> int:
+        allowed = np.array([self.tolerance * peak[key] / (2.0 * self.overlap) for key in _DECIDING])
+        fits = np.all(self._tail(rise, allowed) <= allowed[:, None], axis=0)
+        if not np.any(fits):
+            x = self.medium.travel_time / rise.width
+            raise ValueError(
+                f"target: at order {rise.order:.4g} and an eased corner of {units.text(rise.width, 'time')} "
+                f"(travel time over corner {x:.3g}) the series needs more than {MOST_ORDERS - 2} terms; "
+                "take a longer duration, a larger easing or a lower order."
+            )
+        return max(int(np.argmax(fits)), 2)
+
+    def _certified(self, sums: SeriesSum, peak: dict, size: dict) -> Plan:
+        tails = _summed_tails(self.rises, [self._held_tail(rise)[:, n] for rise, n in zip(self.rises, sums.terms, strict=True)])
+        units_lost = _ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)
+        rounding = {key: units_lost * _UNIT * size[key] for key in _DECIDING}
+        digits = 16
+        short = [key for key in _DECIDING if rounding[key] > 0.5 * self.tolerance * peak[key]]
+        if short and all(segment.uniform for segment in self.medium.segments):
+            ratio = max(size[key] / (self.tolerance * peak[key]) for key in _DECIDING)
+            digits = int(np.ceil(np.log10(ratio))) + 6
+            # the sum itself is rounded to a double once, and its smooth low orders are doubles
+            rounding = {key: (16.0 + 2.0 * max(sums.terms)) * _UNIT * peak[key] + size[key] * 10.0**-digits for key in _DECIDING}
+        names = {
+            "injection_rate": 0,
+            "sandface_rate": 0,
+            "bottomhole_pressure": 0,
+            "sandface_pressure": 0,
+            "target_pressure": 0,
+            "injected_volume": -1,
+        }
+        index = {key: i for i, key in enumerate(_DECIDING)}
+        tail_out, rounding_out, peak_out, cancellation = {}, {}, {}, {}
+        for name in CHANNELS:
+            if name == "target_pressure":
+                top = self.target.largest_change
+                tail_out[name], rounding_out[name], peak_out[name], cancellation[name] = 0.0, 8.0 * _UNIT * top, top, 1.0
+                continue
+            key = (SERIES_NAME.get(name, (name, 0))[0], names[name])
+            tail_out[name] = float(tails[index[key]])
+            rounding_out[name] = rounding[key]
+            peak_out[name] = peak[key]
+            cancellation[name] = size[key] / peak[key] if peak[key] else 1.0
+        certificate = Certificate(
+            order=max(rise.order for rise in self.rises),
+            radius=min(gevrey_radius(rise) for rise in self.rises),
+            terms=max(sums.terms),
+            digits=digits,
+            tolerance=self.tolerance,
+            tail=tail_out,
+            rounding=rounding_out,
+            peak=peak_out,
+            cancellation=cancellation,
+            target_kind=self.target.kind,
+        )
+        return Plan(self.medium, self.target, self.tolerance, certificate, sums)
+
+
+def _grid(target: Target, per_corner: int = 160) -> np.ndarray:
+    """Times at which peaks are judged: dense on every corner, a few on every ramp."""
+    parts = [target.knots, np.linspace(0.0, target.end, 200)]
+    for rise in target.rises:
+        parts.extend(np.linspace(start, start + rise.width, per_corner) for start, _ in rise.corners)
+    return np.unique(np.concatenate(parts))
+
+
+def _largest_overlap(rises: tuple[Rise, ...]) -> int:
+    """How many rises are under way at once, at most."""
+    return max(sum(other.start < rise.end and other.end > rise.start for other in rises) for rise in rises)
+
+
+def _summed_tails(rises: tuple[Rise, ...], tails: list[np.ndarray]) -> np.ndarray:
+    """Largest sum over time of the tails of the rises under way (a rise at rest has none)."""
+    worst = np.zeros_like(tails[0])
+    for rise in rises:
+        total = sum(tail for other, tail in zip(rises, tails, strict=True) if other.start <= rise.start < other.end)
+        worst = np.maximum(worst, total)
+    return worst
