@@ -48,7 +48,7 @@ def test_several_moves_and_faces_against_samples(plan, channel, derivative):
 
 
 @given(order=st.floats(1.2, 1.95), easing=st.one_of(st.just(1.0), st.floats(0.05, 0.99)), slowness=st.floats(0.0, 1.7), up=st.booleans())
-@settings(max_examples=15)
+@settings(max_examples=10)
 def test_of_any_move_against_samples(order, easing, slowness, up):
     """Corners from 1 to 50 travel times, orders 1.2 to 1.95, up and down."""
     plan = one_move(MEDIUM.travel_time * 10.0**slowness / easing, order, easing, to="22.5 MPa" if up else "19 MPa")
@@ -57,7 +57,7 @@ def test_of_any_move_against_samples(order, easing, slowness, up):
 
 
 @given(order=st.floats(1.35, 1.8), easing=st.floats(0.3, 0.99), slowness=st.floats(-0.6, 0.0))
-@settings(max_examples=8)
+@settings(max_examples=6)
 def test_of_fast_moves_against_samples(order, easing, slowness):
     """Corners down to a quarter of the travel time: the rate swings many times."""
     plan = one_move(MEDIUM.travel_time * 10.0**slowness / easing, order, easing)

@@ -44,7 +44,7 @@ def test_the_suggested_duration_will_do_and_a_shorter_one_will_not(name, limit, 
 
 
 @given(st.floats(0.5, 2.5))
-@settings(max_examples=3)
+@settings(max_examples=2)
 def test_of_any_rate_limit(share):
     """Written in four digits, rounded up."""
     limits = Limits(max_rate=share / 3600.0)
@@ -104,7 +104,7 @@ def test_what_even_64_times_the_duration_does_not_reach():
 def test_a_level_that_overlapping_moves_never_rest_at_does_not_count():
     """Up 15 and down 10 bar at once: nothing ever rests at 225 bar, and a longer programme does help."""
     target = fp.Target(start="21 MPa").move(by="1.5 MPa", over="10 h", order=1.6).move(by="-1 MPa", over="12 h", order=1.6, at=0.0)
-    plan, limits = fp.feedforward(MEDIUM, target), Limits(max_bottomhole_pressure="21.8 MPa")
+    plan, limits = fp.feedforward(MEDIUM, target), Limits(max_bottomhole_pressure="22.1 MPa")
     finding = assess(plan, limits)["max_bottomhole_pressure"]
     assert finding.holds is False
     factor = float(ALL.match(finding.remedy)["factor"])

@@ -44,7 +44,8 @@ class Parameter(sympy.Symbol):
     """
 
     def __new__(cls, name: str, value: float) -> Parameter:
-        made = sympy.Symbol.__new__(cls, name, positive=True)
+        # not through the cache, which would hand one object to every medium with a symbol of this name
+        made = sympy.Symbol.__xnew__(cls, name, positive=True)
         made.value = float(value)
         return made
 
@@ -206,7 +207,12 @@ def _pieces(medium: Medium, k: int, kind: str) -> list[tuple[sympy.Expr, Any]]:
     memory = medium.memory.setdefault("exact pieces", {})
     if (k, kind) not in memory:
         symbols = _symbols(medium)
-        if any(zone.leak != 0 for zone in symbols.zones):
+        leaking = [zone.leak != 0 for zone in symbols.zones]
+        if any(leaking) and not all(leaking):
+            raise ValueError(
+                "generating_function: exact forms are held where no zone leaks or every zone does; use coefficients() for numbers."
+            )
+        if any(leaking):
             memory[k, kind] = _by_laplace(symbols, k, kind)
         else:
             rates, pressures = _by_integration(symbols, k)

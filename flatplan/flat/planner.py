@@ -141,10 +141,10 @@ class _Planner:
         return peak, size
 
     def _drowned(self, sums: SeriesSum, peak: dict, size: dict) -> bool:
-        """Whether the rounding of double precision reaches a thousandth of a peak, and more digits are held."""
+        """Whether the rounding of double precision reaches some hundredths of a peak, and more digits are held."""
         lost = (_ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)) * _UNIT
         held = all(segment.uniform for segment in self.medium.segments)
-        return held and any(lost * size[key] > 1e-3 * peak[key] for key in _DECIDING)
+        return held and any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
 
     def _precise_peaks(self, sums: SeriesSum, size: dict) -> dict:
         """The peaks at fewer places (so a little low, on the safe side), in as many digits as it takes to see them."""

@@ -14,7 +14,7 @@ from flatplan.records import Record
 _MOST_PIECES = 64
 
 
-@dataclass(frozen=True, repr=False)
+@dataclass(frozen=True, repr=False, eq=False)
 class RockProfile(Record):
     """A rock with permeability and porosity that vary along the path; stands wherever a `Rock` does.
 
@@ -59,6 +59,17 @@ class RockProfile(Record):
             put(self, "porosity", float(_fractions(units.si_array(porosity, "fraction", "porosity"))[0]))
         else:
             put(self, "porosity", _fractions(_samples(porosity, "fraction", "porosity", places)))
+
+    def _key(self) -> tuple:
+        """What makes two profiles equal: arrays by their values, functions by themselves."""
+        values = (self.permeability, self.porosity, self.compressibility, self.at)
+        return tuple(tuple(v.tolist()) if isinstance(v, np.ndarray) else v for v in values)
+
+    def __eq__(self, other: object) -> bool:
+        return self._key() == other._key() if isinstance(other, RockProfile) else NotImplemented
+
+    def __hash__(self) -> int:
+        return hash(self._key())
 
     def sampled(self, length: float, default_places: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """(places, permeability, porosity) over a stretch of ``length`` [m]."""
@@ -125,9 +136,19 @@ def _values(source: Any, places: np.ndarray, name: str) -> np.ndarray:
     """Samples as they are, a number everywhere, or a function at the places."""
     if not callable(source):
         return np.broadcast_to(np.asarray(source, dtype=float), places.shape).copy()
-    out = np.asarray(source(places), dtype=float)
+    given = source(places)
+    try:
+        out = np.asarray(given)
+        if np.iscomplexobj(out):
+            raise ValueError("complex")
+        out = out.astype(float)
+    except (TypeError, ValueError):
+        raise ValueError(f"{name}: the function must give numbers; it gave {given!r}.") from None
     if out.shape == ():
         out = np.full(places.shape, float(out))
-    if out.shape != places.shape or not np.all(np.isfinite(out)):
-        raise ValueError(f"{name}: the function must give one finite value for each of {len(places)} places; it gave shape {out.shape}.")
+    if out.shape != places.shape:
+        raise ValueError(f"{name}: the function must give one value for each of {len(places)} places; it gave shape {out.shape}.")
+    if not np.all(np.isfinite(out)):
+        i = int(np.flatnonzero(~np.isfinite(out))[0])
+        raise ValueError(f"{name}: the function gave {out[i]} at {places[i]:g} m; every {name} must be finite.")
     return out

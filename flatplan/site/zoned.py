@@ -100,7 +100,7 @@ def zoned(
     height : float, str or quantity
         Height of the layer [m]; radial flow, and linear flow with a skin factor.
     share : float
-        Share of the full sphere; spherical flow only.
+        Share of the full sphere, above 0 and up to 1; spherical flow only.
     face : Face, optional
         The target face; sealed by default.
     well : Well, optional
@@ -113,7 +113,7 @@ def zoned(
     Raises
     ------
     ValueError
-        No zone, an extent that is missing or does not fit the flow, radii that turn back or repeat.
+        No zone, an extent or share that is missing or does not fit the flow, radii that turn back or repeat.
     TypeError
         A zone, face or well of another type.
     """
@@ -123,6 +123,8 @@ def zoned(
         raise ValueError("zones: got an empty list; it takes at least one Zone.")
     for i, zone in enumerate(zones):
         of_type(zone, Zone, f"zones[{i}]", "a flatplan Zone")
+    if flow != "spherical" and share_of_sphere(share) != 1.0:
+        raise ValueError(f"share: is for spherical flow; {flow} flow takes {'height' if flow == 'radial' else 'an area in each zone'}.")
     inputs: dict[str, Any] = {"zones": tuple(zones), "flow": flow}
     if flow == "linear":
         if target_radius is not None:
