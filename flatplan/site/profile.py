@@ -66,7 +66,7 @@ class RockProfile(Record):
         return tuple(tuple(v.tolist()) if isinstance(v, np.ndarray) else v for v in values)
 
     def __eq__(self, other: object) -> bool:
-        return self._key() == other._key() if isinstance(other, RockProfile) else NotImplemented
+        return isinstance(other, RockProfile) and self._key() == other._key()
 
     def __hash__(self) -> int:
         return hash(self._key())
@@ -143,7 +143,8 @@ def _values(source: Any, places: np.ndarray, name: str) -> np.ndarray:
             raise ValueError("complex")
         out = out.astype(float)
     except (TypeError, ValueError):
-        raise ValueError(f"{name}: the function must give numbers; it gave {given!r}.") from None
+        shown = " ".join(repr(given).split())
+        raise ValueError(f"{name}: the function must give numbers; it gave {shown if len(shown) < 60 else shown[:56] + ' ...'}.") from None
     if out.shape == ():
         out = np.full(places.shape, float(out))
     if out.shape != places.shape:
