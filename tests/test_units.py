@@ -18,7 +18,7 @@ from flatplan import units
 
 # What each published factor is printed as, with how far the print was consulted (see references.md).
 # (text, kind, printed in SI, relative half-width of the last printed digit, source)
-NIST = "[NISTSP811] appendix B.8, read in a machine-readable transcription"
+NIST = "[NISTSP811] appendix B.8, read in a machine-readable copy"
 PUBLISHED = [
     ("1 psi", "pressure", 6.894757e3, 1e-7, NIST),
     ("1 lbf/in^2", "pressure", 6.894757e3, 1e-7, NIST),
@@ -30,10 +30,10 @@ PUBLISHED = [
     ("1 md", "permeability", 9.86923e-16, 1e-6, "[Chaudhry2004] table A-1, page scan"),
     ("1 bbl", "volume", 1.589873e-1, 1e-6, NIST),
     ("1 cP", "viscosity", 1.0e-3, 0.0, NIST),
-    ("1 ft", "length", 3.048e-1, 0.0, "[NISTSP811], read in a lecture handout"),
+    ("1 ft", "length", 3.048e-1, 0.0, "[NISTSP811], read in a course handout"),
     ("1 d", "time", 8.64e4, 0.0, NIST),
     ("1 bbl/day", "rate", 1.840131e-6, 2e-7, "[Chaudhry2004] table A-5, page scan"),
-    ("5.6146 ft^3", "volume", 1.589873e-1, 1e-5, "a lecture handout: cubic feet to the barrel"),
+    ("5.6146 ft^3", "volume", 1.589873e-1, 1e-5, "a course handout: cubic feet to the barrel"),
 ]
 
 # The same factors from their definitions, in exact arithmetic: pound 0.45359237 kg, inch 0.0254 m,
