@@ -106,12 +106,8 @@ def test_a_leaky_slab_solves_the_recurrence():
     assert_recurrence(media.medium("slab", leakage="leaking"), 1)
 
 
-def test_a_chain_of_which_only_some_zones_leak_is_refused():
-    made = two_zones("linear", (2e-15, 0.0))
-    sentence = "^generating_function: exact forms are held where no zone leaks or every zone does; use coefficients\\(\\) for numbers.$"
-    for ask in (lambda: made.generating_function(1), lambda: made.series("injection_rate", 1)):
-        with pytest.raises(ValueError, match=sentence):
-            ask()
+def test_two_zones_of_which_one_leaks_solve_the_recurrence():
+    assert_recurrence(two_zones("linear", (2e-15, 0.0)), 1)
 
 
 def assert_values(medium, most):
@@ -140,8 +136,10 @@ def test_values_are_the_coefficients_with_leakage(geometry):
     assert_values(media.medium(geometry, "leaky and storing", leakage="leaking"), 1)
 
 
-def test_values_are_the_coefficients_in_two_leaky_zones():
-    assert_values(two_zones("linear", (2e-15, 1e-15)), 1)
+@pytest.mark.parametrize("flow", ["linear", "spherical"])
+@pytest.mark.parametrize("leakages", [(2e-15, 1e-15), (2e-15, 0.0), (0.0, 2e-15)])
+def test_values_are_the_coefficients_in_two_zones_that_leak(flow, leakages):
+    assert_values(two_zones(flow, leakages), 1)
 
 
 @pytest.mark.parametrize(("geometry", "leakage"), [*((g, "tight") for g in TIGHT), ("slab", "leaking"), ("radial inward", "leaking")])

@@ -207,12 +207,7 @@ def _pieces(medium: Medium, k: int, kind: str) -> list[tuple[sympy.Expr, Any]]:
     memory = medium.memory.setdefault("exact pieces", {})
     if (k, kind) not in memory:
         symbols = _symbols(medium)
-        leaking = [zone.leak != 0 for zone in symbols.zones]
-        if any(leaking) and not all(leaking):
-            raise ValueError(
-                "generating_function: exact forms are held where no zone leaks or every zone does; use coefficients() for numbers."
-            )
-        if any(leaking):
+        if any(zone.leak != 0 for zone in symbols.zones):
             memory[k, kind] = _by_laplace(symbols, k, kind)
         else:
             rates, pressures = _by_integration(symbols, k)

@@ -202,8 +202,7 @@ class Medium(Record):
         Raises
         ------
         ValueError
-            ``k`` not a whole number from 0, a rock that varies along the path (it has no closed form), or a chain
-            of which only some zones leak.
+            ``k`` not a whole number from 0, or a rock that varies along the path, for which there is no closed form.
         """
         return provider("exact forms").generating_function(self, k, kind)
 
@@ -227,7 +226,7 @@ class Medium(Record):
         Raises
         ------
         ValueError
-            Unknown channel, terms not a whole number from 0, a rock that varies along the path, or a chain of which only some zones leak.
+            Unknown channel, terms not a whole number from 0, or a rock that varies along the path.
         """
         return provider("exact forms").series(self, channel, terms, numbers=numbers)
 
