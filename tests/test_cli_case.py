@@ -226,12 +226,12 @@ BAD = {
     "order": (
         ('over = "3 d"', 'over = "3 d"\norder = 2.5'),
         "order =",
-        "[target.stage] order: got 2.5; it takes a Gevrey order above 1 and below 2 ",
+        "[target.stage] order: got 2.5; it takes a Gevrey order above 1 and up to 2: ",
     ),
     "order 1": (
         ('over = "3 d"', 'over = "3 d"\norder = 1'),
         "order =",
-        "[target.stage] order: got 1; it takes a Gevrey order above 1 and below 2 ",
+        "[target.stage] order: got 1; it takes a Gevrey order above 1 and up to 2: ",
     ),
     "zero duration": (('"3 d"', '"0 d"'), "over =", "[target.stage] over: got '0 d'; it must be above zero."),
     "no change": (

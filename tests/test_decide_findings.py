@@ -99,13 +99,16 @@ def test_a_limit_equal_to_the_value_holds_within_the_plans_own_error():
 
 
 def test_gevrey_order():
-    """A plan cannot be made at order 2, so the certificate is put there by hand."""
+    """Past the threshold of order 2 a plan cannot be made, so the certificate is put there by hand."""
     finding = assess(one_move("3 d", order=1.75, easing=0.5))["gevrey_order"]
     assert finding.holds is True and finding.value == 1.75 and finding.margin == pytest.approx(0.25)
     assert finding.reason == (
         "The largest Gevrey order of the moves is 1.75, below 2: the series converges for every medium and every duration."
     )
-    plan = replace(up(), certificate=replace(up().certificate, order=2.0))
+    at_two = assess(one_move("3 d", order=2.0))["gevrey_order"]
+    assert at_two.holds is True and at_two.margin == 0.0 and at_two.remedy == ""
+    assert at_two.reason.startswith("The largest Gevrey order of the moves is 2: the series converges while the travel time is below 2 ")
+    plan = replace(up(), certificate=replace(up().certificate, order=2.0, share_of_threshold=1.2))
     verdict = assess(plan)
     assert verdict["gevrey_order"].holds is False and not verdict.realizable
     assert verdict["gevrey_order"].reason == "The largest Gevrey order of the moves is 2, not below 2: the series need not converge."

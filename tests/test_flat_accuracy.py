@@ -116,7 +116,7 @@ def test_peaks_below_the_rounding_of_double_precision_are_seen_in_more_digits():
     target = fp.Target(start=0.0).move(by=1e6, over=medium.travel_time / 4.0, order=1.2, easing=0.3)
     plan = fp.feedforward(medium, target)
     rise = target.rises[0]
-    times = rise.width * np.linspace(0.35, 0.65, 41)
+    times = rise.width * np.linspace(0.35, 0.65, 601)
     for channel in CHANNELS:
         largest = np.max(np.abs(plan.evaluate(channel, times)))
         assert 0.3 * largest <= plan.certificate.peak[channel] <= 1.2 * largest, channel

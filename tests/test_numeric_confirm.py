@@ -60,6 +60,7 @@ def test_nothing_is_found_where_there_is_nothing(medium):
     assert check.target_error <= 1e-9 * check.target_change
     assert check.settling_error <= 1e-9 * check.target_change
     assert check.grid_error <= 1e-8 * check.target_change
+    assert check.other_error <= 1e-8
     assert check.mass_balance <= 1e-12
     assert check.modes > 30
     times = check.channels.times
@@ -102,11 +103,11 @@ def test_each_condition_counts():
     check = confirm(stand_in(linear()))
     assert check.confirmed
     change = check.target_change
-    for broken in ({"target_error": 1.1e-6 * change}, {"mass_balance": 1.1e-9}, {"grid_error": 1.1e-7 * change}):
+    for broken in ({"target_error": 1.1e-6 * change}, {"mass_balance": 1.1e-9}, {"grid_error": 1.1e-7 * change}, {"other_error": 1.1e-7}):
         assert not replace(check, **broken).confirmed, broken
-    for bearable in ({"target_error": 0.9e-6 * change}, {"mass_balance": 0.9e-9}, {"grid_error": 0.9e-7 * change}):
+    for bearable in ({"target_error": 0.9e-6 * change}, {"mass_balance": 0.9e-9}, {"grid_error": 0.9e-7 * change}, {"other_error": 0.9e-7}):
         assert replace(check, **bearable).confirmed, bearable
-    assert replace(check, grid_error=0.9e-5 * change, tolerance=1e-5).confirmed
+    assert replace(check, grid_error=0.9e-5 * change, other_error=0.9e-5, tolerance=1e-5).confirmed
 
 
 def test_a_starved_model_confirms_nothing(monkeypatch):
@@ -162,6 +163,32 @@ def test_series_and_model_meet(duration, easing):
     assert check.confirmed
     assert check.target_error <= 1e-10 * check.target_change
     assert check.grid_error <= 1e-9 * check.target_change
+
+
+@pytest.mark.parametrize("x", [4.0, 8.0])
+def test_fast_moves_are_judged_by_what_their_pressures_must_serve(x):
+    """The bottomhole pressure swings to 60 and 1600 times the change; the target pressure still has its digits."""
+    medium = fp.slab(length="140 m", area="6000 m^2", rock=ROCK, fluid=WATER)
+    target = fp.Target(start="21 MPa").move(to="22.5 MPa", over=medium.travel_time / x, order=1.5)
+    check = confirm(fp.feedforward(medium, target, tolerance=1e-11))
+    swing = np.abs(check.channels.bottomhole_pressure - 21e6).max()
+    assert swing > 50.0 * check.target_change
+    assert check.confirmed
+    assert check.target_error <= 1e-10 * check.target_change
+    assert check.grid_error <= 1e-8 * check.target_change
+    assert check.other_error <= 1e-8
+
+
+@pytest.mark.parametrize("tolerance", [1e-9, 1e-13])
+def test_a_very_fast_move_is_confirmed(tolerance):
+    """X = 16: rate and bottomhole pressure swing to about 2e5 times what the change itself takes."""
+    medium = fp.slab(length="140 m", area="6000 m^2", rock=ROCK, fluid=WATER)
+    target = fp.Target(start="21 MPa").move(to="22.5 MPa", over=medium.travel_time / 16.0, order=1.5)
+    check = confirm(fp.feedforward(medium, target, tolerance=tolerance))
+    assert np.abs(check.channels.bottomhole_pressure - 21e6).max() > 1e5 * check.target_change
+    assert check.confirmed
+    assert check.target_error <= 3e-9 * check.target_change
+    assert check.grid_error <= 1e-8 * check.target_change
 
 
 def test_a_held_face_is_compared_by_its_rate():

@@ -100,6 +100,20 @@ def test_functions_are_followed(name):
     assert off.max() <= 4.0 * panels.error + AIM * panels.peak
 
 
+def test_a_rate_is_followed_to_the_volume_that_is_asked_for():
+    """1e-15 of peak times span in all; where nothing is asked for, panels stay as wide as the peak allows."""
+    function, knots = FUNCTIONS["bump"]
+    free = panels_of(function, 0.0, 2 * DAY, knots)
+    asked = 1e-15 * 2 * DAY * free.peak
+    near = panels_of(function, 0.0, 2 * DAY, knots, asked)
+    off = [float(p.errors @ np.diff(p.edges)) for p in (free, near)]
+    assert off[0] > 4.0 * asked
+    assert off[1] <= 2.0 * asked
+    assert len(free.edges) < len(near.edges) < 3 * len(free.edges)
+    loose = panels_of(function, 0.0, 2 * DAY, knots, 1e6 * asked)
+    np.testing.assert_array_equal(loose.edges, free.edges)
+
+
 def test_the_volume_of_a_function_is_exact():
     """∫ of 2e-3 sin(40 t/d) over [0, t]."""
     panels = panels_of(FUNCTIONS["sine"][0], 0.0, 2 * DAY)

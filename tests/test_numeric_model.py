@@ -15,8 +15,9 @@ from hypothesis import strategies as st
 
 from flatplan.numeric import Mesh, Steps, discrete_model, model, run, simulate
 from flatplan.numeric.elements import GRADING, elements, reference_element, sample_points, shapes
-from flatplan.numeric.first_mesh import first_mesh
+from flatplan.numeric.first_mesh import FIRST_DEGREE, first_mesh
 from flatplan.numeric.history import panels_of
+from flatplan.numeric.march import chained, march
 from flatplan.site import Face, Fluid, Medium, RockProfile, Segment, Well, slab
 
 ALPHA = MOBILITY / CAPACITY
@@ -34,7 +35,7 @@ def step_answer(mesh, taus):
     """Sandface and target of a slab under a constant rate on one mesh, in the units of `slab_series`."""
     found = discrete_model(linear(), mesh)
     panels = Steps(edges=[0.0, 1e3 * T_D], rates=[1.0]).panels.between(0.0, 1e2 * T_D)
-    ((_, states),) = found.states(panels, taus * T_D, found.rest())
+    ((_, states),) = found.states(march(panels, taus * T_D), found.rest())
     scale = MOBILITY * AREA / LENGTH
     return [found.readouts[c].of(states, 0.0 * states, np.ones(len(taus))) * scale for c in ("sandface_pressure", "target_pressure")]
 
@@ -53,6 +54,60 @@ def test_the_error_falls_exponentially_with_the_degree():
     errors = [np.max(np.abs(step_answer(Mesh(degree, 3), taus)[1] - slab_series(taus, 0.0))) for degree in (4, 6, 8, 10, 12)]
     assert errors[-1] < 1e-9
     assert all(after < before / 10.0 for before, after in pairwise(errors)), errors
+
+
+@settings(max_examples=20)
+@given(st.lists(st.floats(1e-6, 1.0), min_size=1, max_size=60), st.integers(1, 7), st.floats(0.0, 5.0))
+def test_steps_are_chained_like_one_by_one(widths, modes, slow):
+    decay = slow * np.arange(modes) ** 4.0
+    kept = np.exp(-np.outer(widths, decay))
+    gains = np.cos(np.arange(kept.size)).reshape(kept.shape)
+    state = start = np.linspace(-1.0, 1.0, modes)
+    expected = np.array([state := k * state + g for k, g in zip(kept, gains, strict=True)])
+    np.testing.assert_allclose(chained(gains, kept, start), expected, rtol=0.0, atol=1e-13)
+
+
+@pytest.mark.parametrize("spread", [np.linspace(0.0, 3.0, 700), np.geomspace(1e-12, 3.0, 300), np.array([1e-17, 2e-17, 4e-17, 1.0, 3.0])])
+def test_times_on_the_way_do_not_matter(spread):
+    """Amplitudes at each time are those that a run to it alone gives, whether steps are alike or each of its own length."""
+    medium = linear(face=Face(leak=5e-10))
+    found = discrete_model(medium, Mesh(8, 2))
+    panels = panels_of(lambda t: 1e-3 * np.sin(3.0 * t / T_D) + 1e-3, 0.0, 3.0 * T_D)
+    ((_, states),) = found.states(march(panels, spread * T_D), found.rest())
+    for i in (0, 1, len(spread) // 3, len(spread) // 2, len(spread) - 1):
+        ((_, alone),) = found.states(march(panels, spread[i : i + 1] * T_D), found.rest())
+        np.testing.assert_allclose(states[i], alone[0], rtol=1e-11, atol=1e-15 * np.abs(states).max())
+
+
+def test_steps_are_of_few_kinds_on_an_even_grid():
+    panels = Steps(edges=[0.0, 0.3 * T_D, 1.0 * T_D], rates=[1.0, 2.0]).panels
+    way = march(panels, np.linspace(0.0, T_D, 1001))
+    widths, kind = way.kinds(slice(0, 1001))
+    assert len(widths) <= 6
+    np.testing.assert_allclose(widths[kind], way.widths, rtol=0.0, atol=1e-14 * T_D)
+
+
+@pytest.mark.parametrize(
+    "medium",
+    [
+        linear(),
+        linear(face=Face(leak=5e-10, storage=1e-5), well=Well(storage=1e-6), resistance=1e8),
+        linear(((60.0, 1.0, 1.0, 2e-15), (80.0, 0.2, 3.0, 0.0))),
+        linear(face=Face(held=True), well=Well(storage=1e-6)),
+        round_medium("radial", (100.0, 3.0, 0.1), ((1.0, 1.0, 1e-15), (0.1, 1.0, 0.0))),
+    ],
+)
+def test_the_most_that_the_target_answers(medium):
+    """A lasting rate: 1/c_0. A volume at once: never more than the kernel reaches, and not above the bound by c_0, c_1, c_2."""
+    found = discrete_model(medium, Mesh(16, 3))
+    to_rate, to_volume = found.most_answers()
+    c0, c1, c2 = medium.coefficients("injection_rate", 2)
+    assert to_rate == (pytest.approx(1.0 / c0, rel=1e-9) if c0 else math.inf)
+    assert to_volume <= c1 / (c1**2 - 2.0 * c0 * c2) * (1.0 + 1e-9)
+    kernel = found.free("target_pressure", found.drive[None, :], np.geomspace(0.05, 20.0, 400) * medium.travel_time)[0]
+    assert 0.3 * to_volume < kernel.max() <= to_volume * (1.0 + 1e-9)
+    # the mesh from which the fineness of the rate is taken says the same
+    assert discrete_model(medium, Mesh(FIRST_DEGREE, 1)).most_answers()[1] == pytest.approx(to_volume, rel=1e-3)
 
 
 @pytest.mark.parametrize("degree", [2, 7, 24])

@@ -261,6 +261,28 @@ def test_a_noisy_rate_is_said():
     assert MOST_REFINEMENTS > 1
 
 
+def test_a_noisy_rate_does_not_stop_the_mesh_before_its_own_error(monkeypatch):
+    """The tolerance is out of reach, but what the mesh adds is brought below what the noise does."""
+    monkeypatch.setattr(simulation, "first_mesh", lambda *_: simulation.Mesh(4, 1))
+    rng = np.random.default_rng(4)
+    noisy = run(MEDIA[0], lambda t: 1e-3 * (1.0 + 1e-10 * rng.standard_normal(len(t))), output_times(MEDIA[0])[1:], tolerance=1e-12)
+    assert not noisy.converged
+    assert 1e-12 < noisy.following_error < 1e-8
+    assert noisy.refinements > 1
+    assert noisy.relative_error <= 2.0 * noisy.following_error
+
+
+def test_scales_of_the_errors():
+    """Without a scale the largest pressure change counts for all; with one, the target's is judged by it, the well's by its own swing."""
+    history = Steps(edges=[0.0, 1e4], rates=[1e-3])
+    free = run(MEDIA[0], history, [1e4])
+    scaled = run(MEDIA[0], history, [1e4], scale=1e-3 * free.largest_change)
+    for result, target in ((free, free.largest_change), (scaled, 1e-3 * free.largest_change)):
+        assert result.relative_errors["target_pressure"] == pytest.approx(result.errors["target_pressure"] / target)
+        assert result.relative_errors["sandface_pressure"] == pytest.approx(result.errors["sandface_pressure"] / free.largest_change)
+        assert result.relative_error == max(result.relative_errors.values())
+
+
 def test_nothing_happens_without_a_rate():
     result = run(MEDIA[1], lambda t: 0.0, [0.0, 1e5], start="3 MPa")
     assert result.converged

@@ -390,7 +390,7 @@ def test_labels_are_spread_in_order_and_within_bounds(wanted, gap):
 @pytest.mark.parametrize(
     ("call", "kind", "sentence"),
     [
-        (lambda: plot("plan"), TypeError, "^thing: got str; it takes a medium, a plan, steps, channels or a check.$"),
+        (lambda: plot("plan"), TypeError, "^thing: got str; it takes a medium, a plan, terms, steps, channels or a check.$"),
         (lambda: plot(plain(), kind="pie"), ValueError, "^kind: got 'pie'; it takes one of 'history', 'profile'.$"),
         (lambda: plot(plain(), units="cgs"), ValueError, "^units: got 'cgs'; it takes one of"),
         (lambda: plot(plain(), limits={"max_rate": 1}), TypeError, "^limits: got dict; it takes Limits or a verdict.$"),

@@ -45,6 +45,8 @@ def things() -> dict[str, object]:
         "channels": j.check.channels,
         "verdict": j.verdict,
         "certificate": j.plan.certificate,
+        "terms": j.plan.terms(),
+        "terms of a pressure": j.plan.terms("bottomhole_pressure"),
         "check": j.check,
         "check of steps": j.steps_check,
         "medium": j.medium,
@@ -332,7 +334,7 @@ def test_a_zone_of_varying_rock_keeps_its_places(flow):
 
 
 def test_what_it_does_not_know():
-    known = "a plan, channels, steps, a verdict, a certificate, a check, a medium, a target, limits or volumes"
+    known = "a plan, channels, steps, a verdict, a certificate, terms, a check, a medium, a target, limits or volumes"
     with pytest.raises(TypeError, match=f"^thing: got int; it takes {known}.$"):
         table(3)
     with pytest.raises(ValueError, match="^units: got 'imperial'; it takes one of 'SI', 'metric', 'field'.$"):

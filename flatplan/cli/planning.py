@@ -108,6 +108,7 @@ def summary(outcome: Outcome) -> dict:
         "rounding": certificate.rounding,
         "target_error_Pa": float(outcome.check.target_error),
         "grid_error_Pa": float(outcome.check.grid_error),
+        "other_grid_error": float(outcome.check.other_error),
         "mass_balance": float(outcome.check.mass_balance),
         "findings": [
             {

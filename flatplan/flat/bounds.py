@@ -34,20 +34,25 @@ and on each cell the monotone factors at the corner that is worst: |z| falls wit
 grows with φ and falls with σ (for θ ≤ 1, σ ≤ 1/2), |1-2z| grows with φ and is convex in σ. Since -k ln(θσ) is
 linear in ln σ it needs no such term, and neither does the largest over a cell of a bound that is linear there.
 Below the grid, (iv) at the grid's end: it still grows with σ there, as σ^-γ > k/(γμ).
-The grid is computed in double precision; `_SLACK` is far above its rounding. Cauchy's estimate as a
-way to Gevrey bounds: [Gevrey1918].
+Rounding is outwards throughout: ρ is an interval's lower end; on the grid every f is lowered by 1e-12 |h| (a power, a cosine and
+their arguments are within a few 2^-53 times γ + |ln q|, so 1e-13), and what is added up afterwards is below 1e4 in size, its
+rounding below 1e-11, under `_SLACK`. Cauchy's estimate as a way to Gevrey bounds: [Gevrey1918].
 """
 
 from __future__ import annotations
 
 import math
 from functools import lru_cache
+from typing import Any
 
 import numpy as np
 from scipy.special import gammaln
 
+from flatplan.flat.intervals import IV, lower
+
 # Added to every logarithm: bounds may only be too large.
 _SLACK = 1e-9
+_ROUNDING = 1e-12  # of |h|
 _CELL = 0.02  # δ, step of the grid in ln σ
 _ANGLES = 64  # cells in φ, the finer the nearer they are to π, where |z| is least
 # θ as multiples of tan ψ: steps of a fifth, as the bound loses about e^(k step²), finer where it is steep in θ.
@@ -56,10 +61,16 @@ _CIRCLES = np.unique(np.concatenate([np.geomspace(0.02, 0.7, 20), np.linspace(0.
 _LARGEST = 0.988  # θ stays clear of 1, where the circle reaches the end of the bump
 
 
+@lru_cache(maxsize=256)
+def radius_interval(gamma: float) -> Any:
+    """ρ of the closed form (2) as an interval."""
+    g = IV.mpf(gamma)
+    return g ** (1 / g) * IV.sin(IV.pi / (2 * (g + 1))) ** (1 + 1 / g)
+
+
 def closed_form_radius(gamma: float) -> float:
-    """ρ of the closed form (2)."""
-    psi = math.pi / (2.0 * (gamma + 1.0))
-    return gamma ** (1.0 / gamma) * math.sin(psi) ** (1.0 + 1.0 / gamma)
+    """ρ of the closed form (2), rounded down."""
+    return lower(radius_interval(gamma))
 
 
 def log_closed_form(gamma: float, orders: np.ndarray) -> np.ndarray:
@@ -98,7 +109,7 @@ def _grid(gamma: float, sigma_low: float) -> tuple[np.ndarray, np.ndarray, np.nd
     by_sigma = gamma**2 * (slope_most / far_least) ** 2 + gamma * z_most / far_least**2
     by_phi = gamma * (gamma + 1.0) * lever**2 + 2.0 * gamma * w_most**2 / q_least + gamma * lever
     step_l = log_sigma[1] - log_sigma[0]
-    give = h_most * (by_sigma * step_l**2 + by_phi * np.diff(phi) ** 2) / 8.0
+    give = h_most * ((by_sigma * step_l**2 + by_phi * np.diff(phi) ** 2) / 8.0 + _ROUNDING)
     lower = np.minimum(f[:-1, :, 1:], f[:-1, :, :-1]) - give
     upper = np.minimum(f[1:, :, 1:], f[1:, :, :-1]) - give
     return log_sigma, theta, lower.min(axis=2), upper.min(axis=2)

@@ -9,6 +9,9 @@ from flatplan import units
 from flatplan.channels import described
 from flatplan.records import Record
 
+# Share of its change by which the rounding of the rate may move the target before that is said.
+_WORTH_SAYING = 1e-6
+
 
 @dataclass(frozen=True, repr=False)
 class Certificate(Record):
@@ -17,7 +20,7 @@ class Certificate(Record):
     Attributes
     ----------
     order : float
-        Largest Gevrey order s among the moves; below 2, so the series converges at every duration.
+        Largest Gevrey order s among the moves. Below 2 the series converges at every duration; at 2 under a threshold.
     radius : float
         Smallest ρ [s] of the bounds ``sup|y^(k)| ≤ M (k!)^s / ρ^k``.
     terms : int
@@ -27,15 +30,23 @@ class Certificate(Record):
     tolerance : float
         What was asked, relative to each channel's peak.
     tail : dict of str to float
-        Proven bound on what the cut leaves out, for each channel, SI.
+        Proven bound on what the cut leaves out, for each channel, SI. For the target: how far the cut of the rate can move it.
     rounding : dict of str to float
-        Estimate of the rounding error of the sum, for each channel, SI.
+        Bound on the rounding error of the sum, for each channel, SI: proven where more digits than a double's are carried; in
+        double precision calibrated against ball arithmetic (of which it is at least twice the largest error found). For the target: of
+        the target as stated.
     peak : dict of str to float
         Largest size met on the plan's own grid, for each channel (pressures: of the change), SI.
     cancellation : dict of str to float
         Sum of the sizes of the terms over the peak: how much the terms cancel.
     target_kind : str
         What "target_pressure" stands for: "pressure", or "rate" for a held face (the rate through it [m³/s]).
+    target_rounding : float
+        How far the rounding of the rate can move the target, at most, SI: a rate in doubles that swings to 1e6 times its mean cannot
+        hold the target to the last digits.
+    share_of_threshold : float
+        For moves of order 2: the travel time over twice the eased corner, the largest; their series converge while it is below 1.
+        0 where every order is below 2.
     """
 
     order: float
@@ -48,14 +59,23 @@ class Certificate(Record):
     peak: dict[str, float]
     cancellation: dict[str, float]
     target_kind: str = "pressure"
+    target_rounding: float = 0.0
+    share_of_threshold: float = 0.0
 
     @property
     def met(self) -> bool:
         """Whether tail and rounding together stay within the tolerance in every channel."""
         return all(self.tail[c] + self.rounding[c] <= self.tolerance * self.peak[c] for c in self.tail)
 
+    @property
+    def convergence(self) -> str:
+        """Why the series converges, in words."""
+        if self.order < 2.0:
+            return "below 2: converges for every duration"
+        return f"at 2: converges while the travel time is below 2 eased corners; here it is {2.0 * self.share_of_threshold:.3g}"
+
     def _rows(self) -> Iterable[tuple[str, str]]:
-        yield "Gevrey order", f"{self.order:.4g} (below 2: converges for every duration)"
+        yield "Gevrey order", f"{self.order:.4g} ({self.convergence})"
         yield "radius ρ", units.text(self.radius, "time")
         yield "terms", f"{self.terms}, in {self.digits} digits"
         for channel, tail in self.tail.items():
@@ -63,3 +83,6 @@ class Certificate(Record):
             peak = self.peak[channel] or 1.0
             yield words, f"tail ≤ {tail / peak:.1e}, rounding about {self.rounding[channel] / peak:.1e} of {units.text(peak, kind)}"
         yield "within tolerance", f"{'yes' if self.met else 'NO'} ({self.tolerance:.1e} of each peak)"
+        share = self.target_rounding / (self.peak["target_pressure"] or 1.0)
+        if share > _WORTH_SAYING:
+            yield "rate as doubles", f"it swings so widely that its own rounding may move the target by up to {share:.1e} of its change"

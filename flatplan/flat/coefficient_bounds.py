@@ -23,6 +23,7 @@ import math
 
 import numpy as np
 
+from flatplan.flat.generating import scaled_coefficients
 from flatplan.site import Medium
 
 # Coefficients come from floating-point sums of non-negative terms; far above their relative error.
@@ -88,3 +89,19 @@ def scaled_bounds(medium: Medium, channel: str, orders: np.ndarray) -> np.ndarra
             out = out + storage * (before_pressure + resistance * before_rate) * _one_order_up(k, medium.travel_time)
     leak = max(s.leakage / s.least_capacity for s in medium.segments)
     return out * (math.cosh(math.sqrt(leak * medium.travel_time)) * _SLACK)
+
+
+def scaled_sizes(medium: Medium, channel: str, orders: int) -> np.ndarray:
+    """``|ĉ_0| … |ĉ_orders|`` from the coefficients themselves, from above.
+
+    They are sums of terms of one sign, with an error far below the 1e-9 by which they are raised; for a stimulated well (negative
+    skin) some are differences, and there 1e-9 of the bound on the parts is added instead.
+    """
+    out = np.abs(scaled_coefficients(medium, channel, orders)) * _SLACK
+    if medium.well_resistance < 0.0:
+        k = np.arange(orders + 1, dtype=float)
+        low = np.abs(scaled_coefficients(medium, "sandface_pressure", orders)) + abs(medium.well_resistance) * np.abs(
+            scaled_coefficients(medium, "sandface_rate", orders)
+        )
+        out += 1e-9 * np.where(k < 2.0, low, scaled_bounds(medium, channel, np.maximum(k, 2.0)))
+    return out

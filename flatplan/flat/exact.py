@@ -195,7 +195,7 @@ def series(medium: Medium, channel: str, terms: int, *, numbers: bool = False) -
 
 
 def _symbols(medium: Medium) -> _Symbols:
-    if not all(segment.uniform for segment in medium.segments):
+    if not medium.uniform:
         raise ValueError("generating_function: a rock that varies along the path has no closed form; use coefficients() for numbers.")
     if "exact symbols" not in medium.memory:
         medium.memory["exact symbols"] = _Symbols(medium)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 from typing import Any
@@ -12,11 +11,11 @@ import numpy as np
 from flatplan import units
 from flatplan.channels import CHANNELS, Channels
 from flatplan.flat.certificate import Certificate
-from flatplan.flat.extended import ROWS_KEPT, evaluate_extended
+from flatplan.flat.extended import ExtendedSum
 from flatplan.flat.generating import generating_table, pressure_at, scaled_coefficients
-from flatplan.flat.precise import precise_pressure, precise_scaled
 from flatplan.flat.summation import SeriesSum
 from flatplan.flat.target import Target
+from flatplan.flat.terms import Terms, channel_terms
 from flatplan.flat.volumes import Volumes
 from flatplan.records import Record, one_of
 from flatplan.site import Medium
@@ -40,6 +39,8 @@ class Plan(Record):
     certificate : Certificate
     series : SeriesSum
         The cut series, term counts per rise.
+    extended : ExtendedSum, optional
+        The same series in more digits, where double precision does not serve.
     """
 
     medium: Medium
@@ -47,6 +48,7 @@ class Plan(Record):
     tolerance: float
     certificate: Certificate
     series: SeriesSum = field(repr=False)
+    extended: ExtendedSum | None = field(default=None, repr=False, compare=False)
 
     @property
     def end(self) -> float:
@@ -90,9 +92,6 @@ class Plan(Record):
 
         Pairs whose series start at the same derivative share one pass.
         """
-        if self.certificate.digits > 16 and times.size > ROWS_KEPT // 2:  # rows of two corners at a time may be alive
-            parts = np.array_split(times, math.ceil(2 * times.size / ROWS_KEPT))
-            return np.concatenate([self.rows(wanted, part) for part in parts], axis=1)
         out = np.empty((len(wanted), times.size))
         groups: dict[int, list[tuple[int, str]]] = {}
         for row, (channel, derivative) in enumerate(wanted):
@@ -104,17 +103,10 @@ class Plan(Record):
         return out
 
     def _sum_shift(self, names: list[str], times: np.ndarray, shift: int) -> np.ndarray:
+        if self.extended is not None:
+            return self.extended.evaluate(names, times, shift)
         most = max(self.series.terms)
-        if self.certificate.digits > 16:
-            exact = precise_scaled(self.medium, tuple(names), most, self._bits)
-            if exact is not None:
-                return evaluate_extended(self.series, exact, times, shift, self.certificate.digits)
         return self.series.evaluate(np.array([scaled_coefficients(self.medium, name, most) for name in names]), times, shift)
-
-    @property
-    def _bits(self) -> int:
-        """Working bits of the coefficients where double precision is not enough."""
-        return math.ceil(self.certificate.digits * math.log2(10.0))
 
     def rate(self, times: Any) -> np.ndarray:
         """Injection rate [m³/s] at ``times`` [s], shape (len(times),)."""
@@ -169,9 +161,8 @@ class Plan(Record):
         """
         places = self.medium.positions(x)
         t = units.si_array(times, "time", "times")
-        if self.certificate.digits > 16:
-            exact = [precise_pressure(self.medium, float(x), max(self.series.terms), self._bits) for x in places]
-            return self.target.rest_pressure + evaluate_extended(self.series, exact, t, 0, self.certificate.digits)
+        if self.extended is not None:
+            return self.target.rest_pressure + self.extended.pressure(places, t)
         table = generating_table(self.medium, max(self.series.terms))
         scaled = pressure_at(table, places)[: max(self.series.terms) + 1].T
         return self.target.rest_pressure + self.series.evaluate(scaled, t)
@@ -195,6 +186,28 @@ class Plan(Record):
         if self.medium.face.storage:
             stored = stored + self.medium.face.storage * self.target.derivatives(t, 0)[0]
         return Volumes(times=t, injected=injected, stored=stored, leaked=injected - stored)
+
+    def terms(self, channel: str = "injection_rate") -> Terms:
+        """One channel's series term by term: the size each term reaches, its proven bound, and the tail after it.
+
+        Parameters
+        ----------
+        channel : str
+            A name of `Channels`.
+
+        Returns
+        -------
+        Terms
+            SI, shape (K + 1,) each; K lies some terms beyond the cut.
+
+        Raises
+        ------
+        ValueError
+            Unknown channel.
+        """
+        one_of(channel, tuple(CHANNELS), "channel")
+        source = SERIES_NAME.get(channel, (channel, 0))
+        return channel_terms(self.medium, self.target, self.series, self.certificate, channel, source)
 
     def _title(self) -> str:
         return "Plan"

@@ -8,16 +8,16 @@ import numpy as np
 
 from flatplan import units
 from flatplan.channels import CHANNELS
-from flatplan.flat.bump import MOST_ORDERS
+from flatplan.flat.answer import TargetAnswer
 from flatplan.flat.certificate import Certificate
-from flatplan.flat.extended import evaluate_extended
+from flatplan.flat.extended import ExtendedSum
 from flatplan.flat.generating import scaled_coefficients
 from flatplan.flat.plan import SERIES_NAME, Plan
-from flatplan.flat.precise import precise_scaled
+from flatplan.flat.remedy import MOST_TERMS, past_the_threshold, too_many_terms
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum
 from flatplan.flat.tail import gevrey_radius, tail_table
-from flatplan.flat.target import Target
+from flatplan.flat.target import LEAST_ORDER, Target
 from flatplan.records import of_type
 from flatplan.site import Medium
 
@@ -38,6 +38,8 @@ _FIRST_ORDERS = 96
 _ROUNDING_UNITS = 40.0
 _ROUNDING_UNITS_PER_TERM = 2.5  # the coefficients' own error grows with their order
 _UNIT = 2.0**-53
+# Share of the change by which the double path's rounding may move the target before more digits are taken.
+_TARGET_SHARE = 1e-7
 # Leakage damps a steady change along the path by up to e to this power: what a double holds.
 _MOST_DAMPING = 600.0
 
@@ -62,8 +64,8 @@ def feedforward(medium: Medium, target: Target, *, tolerance: float = 1e-9) -> P
     TypeError
         A medium or target of another type.
     ValueError
-        An empty target, a tolerance out of range, or a job whose series needs more terms or digits than
-        are held; the sentence says which and what would do.
+        An empty target, a tolerance out of range, a move of order 2 past its threshold, or a job whose series needs more
+        terms than are held; the sentence says which and what would do.
 
     Notes
     -----
@@ -94,6 +96,9 @@ def feedforward(medium: Medium, target: Target, *, tolerance: float = 1e-9) -> P
     value = units.si(tolerance, "fraction", "tolerance", "positive")
     if not 1e-13 <= value <= 0.1:
         raise ValueError(f"tolerance: got {tolerance!r}; it takes a share of the peak from 1e-13 to 0.1.")
+    for rise in target.rises:
+        if rise.order >= 2.0 and medium.travel_time >= 2.0 * rise.width:
+            raise ValueError(past_the_threshold(medium, rise))
     return _Planner(medium, target, value).plan()
 
 
@@ -105,6 +110,7 @@ class _Planner:
         self.rises = target.rises
         self.grid = _grid(target)
         self.overlap = _largest_overlap(self.rises)
+        self.answer = TargetAnswer.of(medium)
         # Equal rises (but for when and how much) share their tails.
         self.tails: dict[tuple[float, float, float, float], np.ndarray] = {}
 
@@ -143,24 +149,26 @@ class _Planner:
     def _drowned(self, sums: SeriesSum, peak: dict, size: dict) -> bool:
         """Whether the rounding of double precision reaches some hundredths of a peak, and more digits are held."""
         lost = (_ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)) * _UNIT
-        held = all(segment.uniform for segment in self.medium.segments)
-        return held and any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
+        return self.medium.uniform and any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
+
+    def _target_moved(self, rounding: float) -> float:
+        """How far the target can be moved by a rounding of the rate, whatever its course."""
+        under_way = sum(rise.width * len(rise.bumps) for rise in self.rises)
+        return rounding * min(self.answer.by_rate, self.answer.impulse * under_way)
+
+    def _target_drowned(self, rounding: dict) -> bool:
+        """Whether the rounding of the rate could move the target by more than a small share of its change."""
+        return self._target_moved(rounding["injection_rate", 0]) > _TARGET_SHARE * self.target.largest_change
 
     def _precise_peaks(self, sums: SeriesSum, size: dict) -> dict:
         """The peaks at fewer places (so a little low, on the safe side), in as many digits as it takes to see them."""
-        parts: list[np.ndarray] = []
-        for rise in self.rises:
-            live = 0.5 - math.sqrt(0.25 - (4.0**rise.gamma + 40.0) ** (-1.0 / rise.gamma))  # where the bump is above e^-40
-            parts.extend(start + rise.width * np.linspace(live, 1.0 - live, 25) for start, _ in rise.corners)
-        times = np.unique(np.concatenate([self.target.knots, *parts]))
         digits = 32
         while True:
+            exact = ExtendedSum(self.medium, sums, digits)
             peak = {}
             for shift in (0, -1, 1):
-                names = tuple(name for name, s in _DECIDING if s == shift)
-                exact = precise_scaled(self.medium, names, max(sums.terms), math.ceil(digits * math.log2(10.0)))
-                assert exact is not None  # `_drowned` asked
-                values = evaluate_extended(sums, exact, times, shift, digits)
+                names = [name for name, s in _DECIDING if s == shift]
+                values = exact.sampled(names, shift)
                 peak.update({(name, shift): float(np.abs(row).max()) for name, row in zip(names, values, strict=True)})
             if all(size[key] * 10.0**-digits <= 1e-4 * peak[key] for key in _DECIDING) or digits > 500:
                 return peak
@@ -173,39 +181,45 @@ class _Planner:
         while True:
             table = self.tails.get(key)
             if table is None or table.shape[1] <= orders:
-                table = self.tails[key] = tail_table(self.medium, rise, _DECIDING, orders)
+                table = self.tails[key] = self._with_target(tail_table(self.medium, rise, _DECIDING, orders))
             # the closed form's rest should be negligible, or the cut comes later than it need
-            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_ORDERS - 2:
+            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_TERMS:
                 return table
-            orders = min(2 * orders, MOST_ORDERS - 2)
+            orders = min(2 * orders, MOST_TERMS)
+
+    def _with_target(self, tails: np.ndarray) -> np.ndarray:
+        """The same with a last row: how far the target is moved by what is left out of the rate."""
+        rate, volume = (tails[_DECIDING.index(("injection_rate", shift))] for shift in (0, -1))
+        with np.errstate(invalid="ignore"):
+            moved = np.fmin(self.answer.by_volume * volume, self.answer.by_rate * rate)
+        return np.vstack([tails, moved])
 
     def _held_tail(self, rise: Rise) -> np.ndarray:
         return self.tails[rise.width, rise.ramp, rise.gamma, abs(rise.weight)]
 
     def _terms(self, rise: Rise, peak: dict) -> int:
-        allowed = np.array([self.tolerance * peak[key] / (2.0 * self.overlap) for key in _DECIDING])
+        allowed = self.tolerance * np.array([*(peak[key] for key in _DECIDING), self.target.largest_change]) / (2.0 * self.overlap)
         fits = np.all(self._tail(rise, allowed) <= allowed[:, None], axis=0)
         if not np.any(fits):
-            x = self.medium.travel_time / rise.width
-            raise ValueError(
-                f"target: at order {rise.order:.4g} and an eased corner of {units.text(rise.width, 'time')} "
-                f"(travel time over corner {x:.3g}) the series needs more than {MOST_ORDERS - 2} terms; "
-                "take a longer duration, a larger easing or a lower order."
-            )
+            raise ValueError(too_many_terms(self.medium, rise, self.tolerance, LEAST_ORDER))
         return max(int(np.argmax(fits)), 2)
 
     def _certified(self, sums: SeriesSum, peak: dict, size: dict) -> Plan:
         tails = _summed_tails(self.rises, [self._held_tail(rise)[:, n] for rise, n in zip(self.rises, sums.terms, strict=True)])
         units_lost = _ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)
         rounding = {key: units_lost * _UNIT * size[key] for key in _DECIDING}
-        digits = 16
-        short = [key for key in _DECIDING if rounding[key] > 0.5 * self.tolerance * peak[key]]
-        if short and all(segment.uniform for segment in self.medium.segments):
-            ratio = max(size[key] / (self.tolerance * peak[key]) for key in _DECIDING)
-            digits = int(np.ceil(np.log10(ratio))) + 6
-            # the sum itself is rounded to a double once, and its smooth low orders are doubles
-            rounding = {key: (16.0 + 2.0 * max(sums.terms)) * _UNIT * peak[key] + size[key] * 10.0**-digits for key in _DECIDING}
-        names = {
+        digits, exact = 16, None
+        short = any(rounding[key] > 0.5 * self.tolerance * peak[key] for key in _DECIDING) or self._target_drowned(rounding)
+        if short and self.medium.uniform:
+            digits = math.ceil(math.log10(max(size[key] / peak[key] for key in _DECIDING))) + 17
+            exact = ExtendedSum(self.medium, sums, digits)
+            for shift in (0, -1, 1):
+                names = [name for name, s in _DECIDING if s == shift]
+                values = exact.evaluate(names, self.grid, shift)
+                for name, row in zip(names, values, strict=True):
+                    peak[name, shift] = float(np.abs(row).max())
+                    rounding[name, shift] = exact.rounding(name, shift, self.grid) + size[name, shift] * 10.0**-digits
+        shifts = {
             "injection_rate": 0,
             "sandface_rate": 0,
             "bottomhole_pressure": 0,
@@ -218,9 +232,10 @@ class _Planner:
         for name in CHANNELS:
             if name == "target_pressure":
                 top = self.target.largest_change
-                tail_out[name], rounding_out[name], peak_out[name], cancellation[name] = 0.0, 8.0 * _UNIT * top, top, 1.0
+                tail_out[name] = float(tails[-1])
+                rounding_out[name], peak_out[name], cancellation[name] = 8.0 * _UNIT * top, top, 1.0
                 continue
-            key = (SERIES_NAME.get(name, (name, 0))[0], names[name])
+            key = (SERIES_NAME.get(name, (name, 0))[0], shifts[name])
             tail_out[name] = float(tails[index[key]])
             rounding_out[name] = rounding[key]
             peak_out[name] = peak[key]
@@ -236,8 +251,10 @@ class _Planner:
             peak=peak_out,
             cancellation=cancellation,
             target_kind=self.target.kind,
+            target_rounding=self._target_moved(rounding["injection_rate", 0]),
+            share_of_threshold=max((0.5 * self.medium.travel_time / r.width for r in self.rises if r.order >= 2.0), default=0.0),
         )
-        return Plan(self.medium, self.target, self.tolerance, certificate, sums)
+        return Plan(self.medium, self.target, self.tolerance, certificate, sums, exact)
 
 
 def _grid(target: Target, per_corner: int = 160) -> np.ndarray:

@@ -41,7 +41,7 @@ def precise_scaled(medium: Medium, channels: tuple[str, ...], orders: int, bits:
     -------
     list of list of mpf, or None
     """
-    if not all(segment.uniform for segment in medium.segments):
+    if not medium.uniform:
         return None
     key = f"precise to {orders} in {bits} bits"
     if key not in medium.memory:

@@ -4,8 +4,10 @@ For one rise and one channel, cut after term N,
 
     |tail| ≤ Σ_(k>N) C_k t_D^k/(2k)! sup|y^(k)|,
 
-C_k from `coefficient_bounds`, sup|y^(k)| from `bounds`: per order up to some K, and the closed form beyond, where
-successive terms fall by a ratio that itself falls with k, so the rest is at most a geometric series.
+C_k from the coefficients themselves up to some K and from `coefficient_bounds` beyond, sup|y^(k)| from `bounds`: per order up to
+K, and the closed form beyond, where successive terms fall by a ratio that itself falls with k, so the rest is at most a geometric
+series. The rest is taken with intervals; the sums before it are made in double precision, logarithms of up to 1e4 with an error
+below 1e-10, and raised by 1e-9.
 """
 
 from __future__ import annotations
@@ -16,9 +18,10 @@ from functools import lru_cache
 import numpy as np
 from scipy.special import gammaln
 
-from flatplan.flat.bounds import closed_form_radius, log_bump_bounds, log_closed_form
+from flatplan.flat.bounds import closed_form_radius, log_bump_bounds, radius_interval
 from flatplan.flat.bump_integral import bump_integral
-from flatplan.flat.coefficient_bounds import scaled_bounds
+from flatplan.flat.coefficient_bounds import scaled_bounds, scaled_sizes
+from flatplan.flat.intervals import IV, upper
 from flatplan.flat.rise import Rise
 from flatplan.site import Medium
 
@@ -30,7 +33,7 @@ def rise_log_bounds(width: float, ramp: float, gamma: float, orders: int) -> np.
     """Logarithm of a bound on ``sup |y^(k)| / |weight|`` of a rise, k = 0 … orders."""
     log_b = log_bump_bounds(gamma, orders)
     k = np.arange(orders + 1, dtype=float)
-    log_total = math.log(bump_integral(gamma).total) - _INTEGRAL_SLACK
+    log_total = math.log(bump_integral(gamma).total) - 2.0 * _INTEGRAL_SLACK
     out = np.zeros(orders + 1)
     out[1:] = log_b[:-1] - log_total - k[1:] * math.log(width)
     if ramp > 0.0:
@@ -39,11 +42,6 @@ def rise_log_bounds(width: float, ramp: float, gamma: float, orders: int) -> np.
         out[1] = min(out[1], -math.log(ramp))
         out[2:] = np.minimum(out[2:], log_b[:-2] - log_total - math.log(ramp) - (k[2:] - 1.0) * math.log(width) + corner)
     return out
-
-
-def _log_closed(rise: Rise, k: np.ndarray) -> np.ndarray:
-    """The same by the closed form of the bump, for the sum to infinity; k ≥ 1."""
-    return log_closed_form(rise.gamma, k - 1.0) - math.log(bump_integral(rise.gamma).total) + _INTEGRAL_SLACK - k * math.log(rise.width)
 
 
 def tail_table(medium: Medium, rise: Rise, channels: tuple[tuple[str, int], ...], orders: int) -> np.ndarray:
@@ -61,7 +59,7 @@ def tail_table(medium: Medium, rise: Rise, channels: tuple[tuple[str, int], ...]
     Returns
     -------
     ndarray
-        inf where the terms do not yet fall at K; inf for N = 0, as the bounds on coefficients begin at k = 2.
+        inf where the terms do not yet fall at K; inf for N = 0.
     """
     t_d = medium.travel_time
     out = np.empty((len(channels), orders + 1))
@@ -70,7 +68,7 @@ def tail_table(medium: Medium, rise: Rise, channels: tuple[tuple[str, int], ...]
     for row, (channel, shift) in enumerate(channels):
         sup = rise_log_bounds(rise.width, rise.ramp, rise.gamma, orders + max(shift, 0))
         at = np.maximum(k.astype(int) + shift, 0)
-        bound = scaled_bounds(medium, channel, np.maximum(k, 2.0))
+        bound = scaled_sizes(medium, channel, orders)[1:]
         with np.errstate(divide="ignore", over="ignore"):
             terms = np.exp(np.log(bound) + shape + sup[at] + math.log(abs(rise.weight)))
             rest = _rest(medium, rise, channel, shift, orders)
@@ -86,18 +84,29 @@ def _rest(medium: Medium, rise: Rise, channel: str, shift: int, orders: int) -> 
     From k to k + 1 a term changes by ``(X/ρ) (k+a)^s / ((2k+1)(2k+2))`` (a the shift) and the growth of C_k, a
     polynomial of degree 4 at most; both are below the falling ``(X/4ρ) ((k+a)/k)² k^(s-2) (1+2/k)^4``.
     """
-    k = orders + 1.0
-    bound = float(scaled_bounds(medium, channel, np.array([k]))[0])
+    bound = float(scaled_bounds(medium, channel, np.array([orders + 1.0]))[0])
     if bound == 0.0:
         return 0.0
-    t_d = medium.travel_time
-    first = math.log(bound * abs(rise.weight)) + k * math.log(t_d) - gammaln(2.0 * k + 1.0)
-    first += float(_log_closed(rise, np.array([k + shift]))[0])
-    log_ratio = math.log(t_d / (4.0 * gevrey_radius(rise))) + (rise.order - 2.0) * math.log(k)
-    log_ratio += 2.0 * math.log(max(k + shift, k) / k) + 4.0 * math.log1p(2.0 / k)
-    if log_ratio >= -1e-3 or first > 700.0:
+    return bound * abs(rise.weight) * _unit_rest(medium.travel_time, rise.width, rise.gamma, shift, orders) * (1.0 + 1e-15)
+
+
+@lru_cache(maxsize=1024)
+def _unit_rest(t_d: float, width: float, gamma: float, shift: int, orders: int) -> float:
+    """The rest for C_k = 1 at K + 1 and a rise of weight 1, from above; inf where the terms do not fall yet."""
+    k = orders + 1
+    g, x = IV.mpf(gamma), IV.mpf(t_d) / IV.mpf(width)
+    order = 1 + 1 / g
+    rho = radius_interval(gamma)
+    least_total = IV.mpf(bump_integral(gamma).total) * (1 - IV.mpf(_INTEGRAL_SLACK))
+    ratio = x / (4 * rho) * IV.mpf(k) ** (order - 2) * (IV.mpf(max(k + shift, k)) / k) ** 2 * (1 + IV.mpf(2) / k) ** 4
+    if not upper(ratio) < 1.0:
         return math.inf
-    return math.exp(first) / -math.expm1(log_ratio)
+    # sup |y^(n)| ≤ e^(4^γ) ((n-1)!)^s / (ρ^(n-1) I width^n), n = k + shift
+    n = k + shift
+    sup = IV.exp(IV.mpf(4) ** g) * IV.mpf(math.factorial(n - 1)) ** order / rho ** (n - 1) / least_total
+    first = x**k / IV.mpf(math.factorial(2 * k)) * sup / IV.mpf(width) ** shift
+    total = upper(first / (1 - ratio))
+    return total if math.isfinite(total) else math.inf
 
 
 def gevrey_radius(rise: Rise) -> float:

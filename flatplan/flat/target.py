@@ -39,7 +39,7 @@ class Move:
     change : float
         By how much [Pa] (for a held face [m³/s]).
     order : float
-        Gevrey order s of its eased corners, 1 < s < 2.
+        Gevrey order s of its eased corners, 1 < s ≤ 2.
     easing : float
         Share of the duration that each corner's bump takes; 1 is a single bump.
     """
@@ -129,7 +129,8 @@ class Target(Record):
         over : float, str or quantity
             Duration [s]; above zero.
         order : float
-            Gevrey order s, 1.17 ≤ s < 2. Nearer 2 is less peaked, and its series falls more slowly.
+            Gevrey order s, 1.17 ≤ s ≤ 2. Nearer 2 is less peaked, and its series falls more slowly; at 2 it converges only
+            while the medium's travel time is below twice the eased corner.
         easing : float
             Share of the duration that each corner's bump takes, 0 < easing ≤ 1; 1 is one bump, small is a
             straight ramp with tight corners.
@@ -145,15 +146,17 @@ class Target(Record):
         Raises
         ------
         ValueError
-            A duration not above zero, an order outside [1.17, 2), an easing not in (0, 0.999] or 1, no change of level.
+            A duration not above zero, an order outside [1.17, 2], an easing not in (0, 0.999] or 1, no change of level.
         """
         duration = units.si(_given(over, "over", 'a duration such as "3 d"'), "time", "over", "positive")
         order_value = units.si(order, "fraction", "order")
-        if not 1.0 < order_value < 2.0:
-            raise ValueError(
-                f"order: got {order!r}; it takes a Gevrey order above 1 and below 2 "
-                "(at 1 a move cannot start from rest, from 2 on the series may diverge)."
+        if not 1.0 < order_value <= 2.0:
+            why = (
+                "above 2 the derivatives of a move grow faster than (2k)!, and the series diverges for every medium and duration."
+                if order_value > 2.0
+                else "at 1 a move is analytic and cannot start from rest."
             )
+            raise ValueError(f"order: got {order!r}; it takes a Gevrey order above 1 and up to 2: {why}")
         if order_value < LEAST_ORDER:
             raise ValueError(
                 f"order: got {order!r}; orders from {LEAST_ORDER} on are held "

@@ -44,40 +44,42 @@ def decay_moments(decay: np.ndarray, degree: int) -> np.ndarray:
         shape ``(degree + 1, *decay.shape)``; ``∫_0^τ e^(-λ(τ-s)) P_j(2s/τ - 1) ds = τ W_j``.
     """
     y = 0.5 * np.asarray(decay, dtype=float)
-    moments = np.empty((degree + 1, *y.shape))
+    shape, y = y.shape, y.ravel()
+    moments = np.empty((degree + 1, y.size))
     safe = np.where(y > 0.0, y, 1.0)
     moments[0] = np.where(y > 0.0, -np.expm1(-2.0 * y) / (2.0 * safe), 1.0)
-    if degree == 0:
-        return moments
-    split = max(degree * degree / 4.0, 2.0 * _SMALL)
-    start = 8 + math.ceil(4.0 * math.sqrt(split))
-    large = y > split
-    small = y <= _SMALL
-    for chosen, terms in ((small, 12), (~(small | large), start)):
-        if np.any(chosen):
-            moments[1:, chosen] = _downward(y[chosen], moments[0, chosen], degree, terms)
-    if np.any(large):
-        moments[1:, large] = _upward(y[large], moments[0, large], degree)
-    return moments
+    if degree:
+        split = max(degree * degree / 4.0, 2.0 * _SMALL)
+        start = 8 + math.ceil(4.0 * math.sqrt(split))
+        large, small = y > split, y <= _SMALL
+        _downward(moments, y, np.flatnonzero(small), 12)
+        _downward(moments, y, np.flatnonzero(~(small | large)), start)
+        _upward(moments, y, np.flatnonzero(large))
+    return moments.reshape(degree + 1, *shape)
 
 
-def _downward(y: np.ndarray, first: np.ndarray, degree: int, terms: int) -> np.ndarray:
+# Both fill rows 1 … degree at ``places`` from row 0, one row at a time: whole tables of them cost more to move than to work out.
+def _downward(moments: np.ndarray, every: np.ndarray, places: np.ndarray, terms: int) -> None:
+    y, degree = every[places], len(moments) - 1
     top = degree + terms
     ratio = y / (top + 0.5 + np.hypot(top + 0.5, y))  # within 1e-3 of the true ratio (leading uniform asymptotics)
-    kept = np.empty((degree, *y.shape))
+    kept = np.empty((degree, y.size))
     for j in range(top - 1, 0, -1):
-        ratio = y / (2 * j + 1 + y * ratio)
+        ratio *= y
+        ratio += 2 * j + 1
+        np.divide(y, ratio, out=ratio)
         if j <= degree:
             kept[j - 1] = ratio
-    kept[0] *= first
-    return np.multiply.accumulate(kept, axis=0)
+    value = moments[0, places]
+    for j in range(degree):
+        value *= kept[j]
+        moments[j + 1, places] = value
 
 
-def _upward(y: np.ndarray, first: np.ndarray, degree: int) -> np.ndarray:
-    kept = np.empty((degree, *y.shape))
-    kept[0] = (0.5 * (1.0 + np.exp(-2.0 * y)) - first) / y
-    before, now = first, kept[0]
-    for j in range(1, degree):
+def _upward(moments: np.ndarray, every: np.ndarray, places: np.ndarray) -> None:
+    y, before = every[places], moments[0, places]
+    now = (0.5 * (1.0 + np.exp(-2.0 * y)) - before) / y
+    moments[1, places] = now
+    for j in range(1, len(moments) - 1):
         before, now = now, before - (2 * j + 1) / y * now
-        kept[j] = now
-    return kept
+        moments[j + 1, places] = now

@@ -3,14 +3,18 @@
 A function is sampled at Gauss points of each panel (never at a panel's ends, so a jump at a knot does no harm). A panel is
 halved until its polynomial of degree 13 agrees with the function at points in between and its last two coefficients are as
 small, to 1e-13 of the largest rate. A narrow panel may be off by more: pressure feels a rate that is wrong over a time ``w`` in
-proportion to ``sqrt(w)`` at most, so what counts is the error times ``sqrt(w / span)``. Source: piecewise Legendre interpolation,
-e.g. L. N. Trefethen, *Approximation Theory and Approximation Practice* (2013), ch. 4 and 8 [Trefethen2013].
+proportion to ``sqrt(w)`` at most, so what counts is the error times ``sqrt(w / span)``. The rate of a fast move swings to 1e5 times
+what its target asks for, which 1e-13 of that would show; for it the volume that the rate may be off in all is stated too.
+
+Source: piecewise Legendre interpolation, e.g. L. N. Trefethen, *Approximation Theory and Approximation Practice* (2013), ch. 4 and 8
+[Trefethen2013].
 
 Assumed, not checked: nothing happens between two knots that is shorter than 1/50 of the time between them.
 """
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from itertools import pairwise
 from typing import Any
@@ -27,13 +31,15 @@ DEGREE = 13
 AIM = 1e-13
 # A function with noise of its own cannot be followed below it; noise up to this much is taken and recorded as error.
 MOST_NOISE = 1e-6
+# What evaluation and projection round by, relative to the largest rate on a panel.
+ROUNDING = 1e-14
 # Halvings: 30 take a corner that no knot announces down to AIM, 45 a square root; there the resolution of the clock ends too.
 MOST_HALVINGS = 46
 MOST_PANELS = 20_000
 _CHECKS = np.array([-0.9965, 0.05, 0.9965])
 
 
-def panels_of(history: Any, start: float, end: float, knots: Any = None) -> Panels:
+def panels_of(history: Any, start: float, end: float, knots: Any = None, volume: float = math.inf) -> Panels:
     """A rate history as `Panels` that cover ``start`` to ``end``.
 
     Parameters
@@ -44,6 +50,8 @@ def panels_of(history: Any, start: float, end: float, knots: Any = None) -> Pane
         [s].
     knots : array_like, optional
         Times [s] where a function jumps, bends or is not analytic.
+    volume : float
+        Most that a function may be off in all, ``∫|departure| dt`` [m³], unless rounding is more.
 
     Returns
     -------
@@ -73,11 +81,11 @@ def panels_of(history: Any, start: float, end: float, knots: Any = None) -> Pane
     marks = [] if given is None else [np.asarray(given, dtype=float)]
     if knots is not None:
         marks.append(units.si_array(knots, "time", "knots"))
-    return fitted(rate, start, end, np.concatenate(marks) if marks else np.empty(0))
+    return fitted(rate, start, end, np.concatenate(marks) if marks else np.empty(0), volume)
 
 
-def fitted(rate: Callable[[np.ndarray], Any], start: float, end: float, knots: np.ndarray) -> Panels:
-    """Piecewise polynomials of degree 13 for a function of time, by adaptive halving."""
+def fitted(rate: Callable[[np.ndarray], Any], start: float, end: float, knots: np.ndarray, volume: float = math.inf) -> Panels:
+    """Piecewise polynomials of degree 13 for a function of time, by adaptive halving; ``volume`` as in `panels_of`."""
     inner = np.unique(knots[(knots > start) & (knots < end)])
     edges = np.concatenate([[start], inner, [end]])
     # A few panels to begin with, so that a feature between two knots is not stepped over.
@@ -94,7 +102,7 @@ def fitted(rate: Callable[[np.ndarray], Any], start: float, end: float, knots: n
     # halvings, on both sides of the latest, is noise of the function; a corner or a jump leaves one of the two sides smooth.
     ancestors = np.full((3, len(left)), np.inf)
     kept: list[tuple[np.ndarray, np.ndarray, np.ndarray]] = []
-    total = 0
+    total, off = 0, 0.0
     for _ in range(MOST_HALVINGS):
         times = 0.5 * (left + right)[:, None] + 0.5 * (right - left)[:, None] * points[order]
         values = np.empty((len(left), len(points)))
@@ -104,12 +112,19 @@ def fitted(rate: Callable[[np.ndarray], Any], start: float, end: float, knots: n
         missed = np.abs(coefficients @ at_checks.T - values[:, DEGREE + 1 :]).max(axis=1)
         missed = np.maximum(missed, np.abs(coefficients[:, -2:]).sum(axis=1))
         good = missed * np.sqrt((right - left) / (end - start)) <= AIM * peak
+        if off + missed[good] @ (right - left)[good] > volume:
+            near = missed <= np.maximum(volume / (end - start), ROUNDING * np.abs(values).max(axis=1))
+            # so far down the function is smooth, or one halving that gains nothing on either side is noise
+            if np.all(np.isfinite(ancestors[0])):
+                near |= np.repeat((good & (missed > ancestors[0] / 4.0)).reshape(-1, 2).all(axis=1), 2)
+            good &= near
         if np.all(np.isfinite(ancestors[2])):
             noise = (missed <= MOST_NOISE * peak) & (missed > ancestors[2] / 4.0)
             good |= np.repeat(noise.reshape(-1, 2).all(axis=1), 2)
         if np.any(good):
             kept.append((left[good], coefficients[good], missed[good]))
             total += int(np.count_nonzero(good))
+            off += float(missed[good] @ (right - left)[good])
         bad = ~good
         if not np.any(bad):
             break

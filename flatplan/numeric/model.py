@@ -23,11 +23,14 @@ import scipy.linalg
 from flatplan.numeric.assembly import Assembly, assemble
 from flatplan.numeric.elements import Mesh, sample_points, shapes
 from flatplan.numeric.exponential import decay_moments
-from flatplan.numeric.panels import Panels, restricted
+from flatplan.numeric.march import March, chained
+from flatplan.numeric.panels import Panels
 from flatplan.site.medium import Medium
 
 # Numbers held at a time while many times are worked through [doubles].
 _CHUNK = 2_000_000
+# Steps of one length from which on a matrix product beats working through them one by one.
+_ALIKE = 8
 
 
 @dataclass(frozen=True, eq=False)
@@ -52,9 +55,10 @@ class Readout:
     rate: float = 0.0
     continuous: bool = False
 
-    def of(self, states: np.ndarray, changes: np.ndarray, rates: np.ndarray) -> np.ndarray:
-        """The output for states and their rates of change, shape (n, modes), and rates, shape (n,)."""
-        return states @ self.state + changes @ self.change + self.rate * rates
+    def of(self, states: np.ndarray, changes: np.ndarray | None, rates: np.ndarray) -> np.ndarray:
+        """The output for states and their rates of change, shape (n, modes; None: of no weight), and rates, shape (n,)."""
+        found = states @ self.state + self.rate * rates
+        return found if changes is None else found + changes @ self.change
 
 
 @dataclass(frozen=True, eq=False)
@@ -101,33 +105,23 @@ class DiscreteModel:
         """The amplitudes of equilibrium: zeros, shape (modes,)."""
         return np.zeros(self.modes)
 
-    def advance(self, states: np.ndarray, coefficients: np.ndarray, durations: np.ndarray) -> np.ndarray:
-        """Amplitudes after polynomial rates, exact mode by mode.
-
-        Parameters
-        ----------
-        states : ndarray
-            Amplitudes at the start, shape (n, modes).
-        coefficients : ndarray
-            Legendre coefficients of each rate over its duration [m³/s], shape (n, degree + 1).
-        durations : ndarray
-            [s], zero or more, shape (n,).
-
-        Returns
-        -------
-        ndarray
-            shape (n, modes).
-        """
-        return states * np.exp(-np.outer(durations, self.decay)) + self._forced(coefficients, durations)
-
-    def _forced(self, coefficients: np.ndarray, durations: np.ndarray) -> np.ndarray:
-        """Amplitudes after polynomial rates from rest, shape (n, modes)."""
-        moments = decay_moments(np.outer(durations, self.decay), coefficients.shape[1] - 1)
-        return np.einsum("jnm,nj->nm", moments, coefficients * durations[:, None]) * self.drive
-
     def unit_answer(self, durations: np.ndarray) -> np.ndarray:
         """Sandface pressure change [Pa s/m³] at the end of a unit rate of each duration [s] from rest, shape of ``durations``."""
-        return self._forced(np.ones((len(durations), 1)), durations) @ self.readouts["sandface_pressure"].state
+        (means,) = decay_moments(np.outer(durations, self.decay), 0)
+        return durations * (means @ (self.drive * self.readouts["sandface_pressure"].state))
+
+    def most_answers(self) -> tuple[float, float]:
+        """What the target answers at most to a unit rate [Pa s/m³] and to a unit volume [Pa/m³] (held face: 1 and [1/s]).
+
+        The rate is ``Σ c_k y^(k)`` of the target, so the transfer function from it to the target has no zeros: a chain of decays
+        ``G / Π (1 + s/λ)``, whose kernel is never negative, has area G, and is nowhere above ``λ G`` with the slowest λ, since no further
+        decay raises the maximum of the first. Where nothing leaks, G is infinite and ``λ G`` is the answer of the constant mode.
+        """
+        weights = self.readouts["target_pressure"].state * self.drive
+        if not self.decay[0]:
+            return np.inf, float(weights[0])
+        lasting = float(np.sum(weights / self.decay))
+        return lasting, lasting * float(self.decay[0])
 
     def panel_starts(self, panels: Panels, initial: np.ndarray) -> np.ndarray:
         """Amplitudes at every edge of ``panels`` from ``initial`` at the first one, shape (m + 1, modes)."""
@@ -135,20 +129,18 @@ class DiscreteModel:
         states[0] = initial
         widths = np.diff(panels.edges)
         for part in self._parts(len(widths), panels.degree):
-            states[1:][part] = self._forced(panels.coefficients[part], widths[part])
+            states[1:][part] = self._steps(panels.coefficients[part], *np.unique(widths[part], return_inverse=True))
         for k, width in enumerate(widths):
             states[k + 1] += states[k] * np.exp(-width * self.decay)
         return states
 
-    def states(self, panels: Panels, times: np.ndarray, initial: np.ndarray) -> Iterator[tuple[slice, np.ndarray]]:
-        """Amplitudes at ``times`` within ``panels``, in parts that fit in memory.
+    def states(self, way: March, initial: np.ndarray) -> Iterator[tuple[slice, np.ndarray]]:
+        """Amplitudes at the times of ``way``, exact mode by mode, in parts that fit in memory.
 
         Parameters
         ----------
-        panels : Panels
-            The rate; its first edge is where ``initial`` holds.
-        times : ndarray
-            [s], within the panels, shape (n,).
+        way : March
+            Rate and times; its panels' first edge is where ``initial`` holds.
         initial : ndarray
             Amplitudes at the first edge, shape (modes,).
 
@@ -157,13 +149,32 @@ class DiscreteModel:
         slice, ndarray
             Which times, and the amplitudes there, shape (len, modes).
         """
-        starts = self.panel_starts(panels, initial)
-        index = np.clip(panels.locate(times), 0, len(panels.edges) - 2)
-        elapsed = times - panels.edges[index]
-        share = np.clip(elapsed / np.diff(panels.edges)[index], 0.0, 1.0)
-        for part in self._parts(len(times), panels.degree):
-            coefficients = restricted(panels.coefficients[index[part]], np.zeros_like(share[part]), share[part])
-            yield part, self.advance(starts[index[part]], coefficients, elapsed[part])
+        starts = self.panel_starts(way.panels, initial)
+        state = initial
+        for part in self._parts(len(way.widths), way.panels.degree):
+            widths, kind = way.kinds(part)
+            states = self._steps(way.coefficients[part], widths, kind)
+            kept = np.exp(-np.outer(widths, self.decay))[kind]
+            anew = np.flatnonzero(way.panel[part] >= 0)
+            states[anew] += kept[anew] * starts[way.panel[part][anew]]
+            kept[anew] = 0.0
+            states = chained(states, kept, state)
+            state = states[-1]
+            yield part, states
+
+    def _steps(self, coefficients: np.ndarray, widths: np.ndarray, kind: np.ndarray) -> np.ndarray:
+        """Amplitudes after one step each from rest, shape (n, modes); step i is ``widths[kind[i]]`` long."""
+        moments = decay_moments(np.outer(widths, self.decay), coefficients.shape[1] - 1)
+        scaled = coefficients * widths[kind][:, None]
+        found = np.empty((len(kind), self.modes))
+        many = np.bincount(kind) >= _ALIKE
+        single = np.flatnonzero(~many[kind])
+        found[single] = np.einsum("jnm,nj->nm", moments[:, kind[single]], scaled[single])
+        for k in np.flatnonzero(many):
+            own = np.flatnonzero(kind == k)
+            found[own] = scaled[own] @ moments[:, k]
+        found *= self.drive
+        return found
 
     def _parts(self, count: int, degree: int) -> Iterator[slice]:
         step = max(1, _CHUNK // ((degree + 3) * self.modes))

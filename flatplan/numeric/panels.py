@@ -7,6 +7,7 @@ Each panel holds Legendre coefficients, so that its decay integrals add without 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -52,7 +53,7 @@ class Panels:
         index, xi = self._reference(times, before)
         inside = (index >= 0) & (index < len(self.edges) - 1)
         coefficients = self.coefficients[np.clip(index, 0, len(self.edges) - 2)]
-        return np.where(inside, np.sum(legendre.legvander(xi, self.degree) * coefficients, axis=-1), 0.0)
+        return np.where(inside, summed(coefficients, xi), 0.0)
 
     def volume(self, times: np.ndarray) -> np.ndarray:
         """Volume since the first edge [m³], exact for the polynomials, shape of ``times``."""
@@ -90,6 +91,25 @@ class Panels:
         return Panels(edges, coefficients, self.errors[index] * inside, self.peak)
 
 
+def summed(coefficients: np.ndarray, xi: np.ndarray) -> np.ndarray:
+    """``Σ_j q_j P_j(ξ)`` for coefficients of shape (n, degree + 1) and ``xi`` of shape (..., n), shape of ``xi``.
+
+    By the recurrence upwards, term by term: a table of all ``P_j`` would cost more to move than to work out.
+    """
+    rows = np.ascontiguousarray(coefficients.T)
+    total = np.empty_like(xi)
+    total[...] = rows[0]
+    before, now = np.ones_like(xi), xi
+    for j, row in enumerate(rows[1:], start=1):
+        total += row * now
+        following = now * xi
+        following *= (2 * j + 1) / (j + 1)
+        before *= j / (j + 1)
+        following -= before
+        before, now = now.copy() if j == 1 else now, following
+    return total
+
+
 def integrals(xi: np.ndarray, degree: int) -> np.ndarray:
     """``∫_-1^ξ P_j`` for j = 0 … degree, shape (*xi.shape, degree + 1)."""
     values = legendre.legvander(xi, degree + 1)
@@ -116,12 +136,15 @@ def restricted(coefficients: np.ndarray, low: np.ndarray, high: np.ndarray) -> n
     if degree == 0:
         return coefficients
     nodes, to_coefficients = projection(degree)
-    xi = 2.0 * (low[:, None] + (high - low)[:, None] * (1.0 + nodes) / 2.0) - 1.0
-    values = np.einsum("nkj,nj->nk", legendre.legvander(xi, degree), coefficients)
-    return values @ to_coefficients.T
+    xi = 2.0 * (low + (high - low) * (0.5 + nodes[:, None] / 2.0)) - 1.0
+    return to_coefficients.dot(summed(coefficients, xi)).T
 
 
+@lru_cache(maxsize=32)
 def projection(degree: int) -> tuple[np.ndarray, np.ndarray]:
-    """Gauss points on [-1, 1] and the matrix from values there to Legendre coefficients (exact for the degree)."""
+    """Gauss points on [-1, 1] and the matrix from values there to Legendre coefficients (exact for the degree), read-only."""
     nodes, weights = legendre.leggauss(degree + 1)
-    return nodes, (legendre.legvander(nodes, degree) * weights[:, None]).T * (np.arange(degree + 1) + 0.5)[:, None]
+    matrix = (legendre.legvander(nodes, degree) * weights[:, None]).T * (np.arange(degree + 1) + 0.5)[:, None]
+    nodes.setflags(write=False)
+    matrix.setflags(write=False)
+    return nodes, matrix

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass
 from functools import cached_property
@@ -12,8 +13,9 @@ import numpy as np
 from flatplan import units
 from flatplan.channels import Channels
 from flatplan.numeric.elements import Mesh
-from flatplan.numeric.first_mesh import first_mesh
+from flatplan.numeric.first_mesh import FIRST_DEGREE, first_mesh
 from flatplan.numeric.history import panels_of
+from flatplan.numeric.march import March, march
 from flatplan.numeric.model import DiscreteModel, discrete_model
 from flatplan.numeric.outputs import Outputs, compare, outputs
 from flatplan.numeric.panels import Panels
@@ -43,10 +45,13 @@ class Simulation(Record):
         difference between the two finest meshes (so rather the error of the coarser), plus what the rate's polynomials may be off.
     grid_error : float
         The largest of the pressure channels' errors [Pa].
+    relative_errors : dict
+        The errors of the pressures, and of the rate through a held face, each over its scale: the largest pressure change (that rate: its
+        own largest). Where a scale was given: for the target that scale, for another pressure the larger of it and its own largest change.
     relative_error : float
-        ``grid_error`` over ``largest_change``, or over the scale given; for a held face also the error of the rate through it.
+        The largest of ``relative_errors``.
     following_error : float
-        The part of ``relative_error`` that comes from following the rate by polynomials.
+        The largest part of them that comes from following the rate by polynomials.
     converged : bool
         Whether that came below the tolerance before the cap on refinements.
     tolerance : float
@@ -72,6 +77,7 @@ class Simulation(Record):
     panels: Panels
     errors: dict[str, float]
     grid_error: float
+    relative_errors: dict[str, float]
     relative_error: float
     following_error: float
     converged: bool
@@ -90,10 +96,14 @@ class Simulation(Record):
         """Number of modes of the finest model."""
         return self.model.modes
 
+    @cached_property
+    def _way(self) -> March:
+        return march(self.panels, self.channels.times)
+
     def amplitudes(self) -> np.ndarray:
         """Amplitudes of the modes at every output time, shape (n, modes): with `DiscreteModel.free`, what a stop there leads to."""
         found = np.empty((len(self.channels.times), self.modes))
-        for part, states in self.model.states(self.panels, self.channels.times, self.begin):
+        for part, states in self.model.states(self._way, self.begin):
             found[part] = states
         return found
 
@@ -101,7 +111,7 @@ class Simulation(Record):
     def state(self) -> State:
         """The state at the last output time, from which `run` and `simulate` can go on."""
         last = self.channels.times[-1:]
-        ((_, states),) = self.model.states(self.panels, last, self.begin)
+        ((_, states),) = self.model.states(march(self.panels, last), self.begin)
         rate = float(self.panels.rate(last, before=True)[0])
         return State(self.model, float(last[0]), states[0], self.volume_before + float(self.panels.volume(last)[0]), rate)
 
@@ -115,7 +125,7 @@ class Simulation(Record):
         """
         field = self.model.field(self.model.medium.positions(x))
         found = np.empty((len(field), len(self.channels.times)))
-        for part, states in self.model.states(self.panels, self.channels.times, self.begin):
+        for part, states in self.model.states(self._way, self.begin):
             found[:, part] = field @ states.T
         return self.start + found
 
@@ -215,7 +225,8 @@ def run(
     medium, history, times, start, tolerance, knots, initial
         As in `simulate`.
     scale : float, optional
-        Pressure change [Pa] that the tolerance refers to (held face: rate [m³/s]); by default the largest simulated.
+        Change of the target [Pa] that the tolerance refers to (held face: of its rate [m³/s]); for the other pressures their own largest
+        change counts where it is larger (held face: always). By default the largest pressure change simulated counts for all.
 
     Returns
     -------
@@ -237,15 +248,21 @@ def run(
         begin = _checked_initial(initial, medium, at)
     # a run of no length still needs a panel
     end = float(at[-1]) if at[-1] > begin else begin + float(medium.travel_time)
-    panels = panels_of(history, begin, end, knots)
-    rates_before = panels.rate(at, before=True)
+    panels = panels_of(history, begin, end, knots, _volume_that_shows(medium, history, tolerance, scale))
+    rates = panels.rate(at, before=True)
+    rates_before = rates.copy()
     rates_before[at == begin] = initial.rate if initial is not None else 0.0
-    # a function has no edge where it ends, so its last value is the one before
-    rates = history.panels.rate(at) if isinstance(history, Steps) else np.where(at == end, rates_before, panels.rate(at))
+    if isinstance(history, Steps):
+        rates = history.panels.rate(at)
+    else:
+        # a function has no edge where it ends, so its last value is the one before
+        jumps = np.isin(at, panels.edges[:-1])
+        rates[jumps] = panels.rate(at[jumps])
+    way, injected = march(panels, at), panels.volume(at)
 
     def on(mesh: Mesh) -> Outputs:
         model = discrete_model(medium, mesh)
-        return outputs(model, panels, at, (rates, rates_before), model.rest() if initial is None else initial.on(model))
+        return outputs(model, way, injected, (rates, rates_before), model.rest() if initial is None else initial.on(model))
 
     mesh = first_mesh(medium, panels, at, tolerance)
     if initial is not None:
@@ -253,13 +270,12 @@ def run(
     coarse, fine = on(mesh), on(mesh.finer())
     found = compare(coarse, fine, panels, float(at[-1]) - begin, scale)
     refinements = 1
-    # `converged` in the result says which of the three ended it
-    while found.relative > tolerance and found.following <= tolerance and refinements < MOST_REFINEMENTS:
+    # What follows the rate too loosely for the tolerance stops it only where it is the larger part. `converged` says what ended it.
+    while found.relative > tolerance and (found.following <= tolerance or found.mesh > found.following) and refinements < MOST_REFINEMENTS:
         coarse, fine = fine, on(fine.model.mesh.finer())
         found = compare(coarse, fine, panels, float(at[-1]) - begin, scale)
         refinements += 1
     before = initial.injected_volume if initial is not None else 0.0
-    injected = panels.volume(at)
     channels = Channels(
         times=at,
         injection_rate=rates,
@@ -276,6 +292,7 @@ def run(
         panels=panels,
         errors=found.errors,
         grid_error=max(found.errors[name] for name in fine.pressures()),
+        relative_errors=found.shares,
         relative_error=found.relative,
         following_error=found.following,
         converged=found.relative <= tolerance,
@@ -289,6 +306,15 @@ def run(
         start=start_pressure,
         volume_before=before,
     )
+
+
+def _volume_that_shows(medium: Medium, history: Any, tolerance: float, scale: float | None) -> float:
+    """Volume by which a rate may be off before the target shows half of the tolerance [m³]."""
+    if scale is None or isinstance(history, Steps | Panels):
+        return math.inf
+    # any mesh has the slowest decay; this one is where most plans begin
+    _, to_volume = discrete_model(medium, Mesh(FIRST_DEGREE, 1)).most_answers()
+    return tolerance / 2.0 * scale / to_volume
 
 
 def _checked_times(times: Any) -> np.ndarray:

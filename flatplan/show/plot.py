@@ -8,6 +8,7 @@ from flatplan.channels import Channels
 from flatplan.decide import Limits, Verdict
 from flatplan.field import PumpedSteps
 from flatplan.flat import Plan
+from flatplan.flat.terms import Terms
 from flatplan.numeric import Check, Steps
 from flatplan.records import of_type, one_of
 from flatplan.show.style import house_style
@@ -18,7 +19,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 KINDS = ("history", "profile")
-_TAKES = "a medium, a plan, steps, channels or a check"
+_TAKES = "a medium, a plan, terms, steps, channels or a check"
 
 
 def plot(
@@ -33,12 +34,13 @@ def plot(
     axes: Any = None,
     title: str | None = None,
 ) -> Figure:
-    """A figure of a medium, of a plan, of the rate as pumped, of channels or of a check.
+    """A figure of a medium, of a plan, of its series term by term, of the rate as pumped, of channels or of a check.
 
     Parameters
     ----------
-    thing : Medium, Plan, PumpedSteps, Steps, Channels or Check
-        A medium: its zones, mobility and storage along the path. A plan: pressures above, rates below. Steps: the
+    thing : Medium, Plan, Terms, PumpedSteps, Steps, Channels or Check
+        A medium: its zones, mobility and storage along the path. A plan: pressures above, rates below. Terms
+        (``plan.terms()``): the size of each, its bound and the bound on all later ones, over the peak. Steps: the
         stairs against the plan, and the departure of the target below. A check: the simulated target on the wanted
         one, and the departure below.
     kind : {"history", "profile"}
@@ -54,7 +56,8 @@ def plot(
     units : {"SI", "metric", "field"}
         Units of the axes; on axes "SI" uses MPa and L/s. Time is in days, hours or minutes, by its length.
     axes : matplotlib axes, or a list of them, optional
-        Where to draw: two (upper, lower), for a medium three, for a profile or steps without a plan one. By default a new figure.
+        Where to draw: two (upper, lower), for a medium three, for a profile, terms or steps without a plan one. By
+        default a new figure.
     title : str, optional
         Above the upper panel.
 
@@ -79,7 +82,7 @@ def plot(
     """
     one_of(units, SYSTEMS, "units")
     one_of(kind, KINDS, "kind")
-    if not isinstance(thing, (Medium, Plan, Steps, Channels, Check)):
+    if not isinstance(thing, (Medium, Plan, Terms, Steps, Channels, Check)):
         raise TypeError(f"thing: got {type(thing).__name__}; it takes {_TAKES}.")
     if title is not None:
         of_type(title, str, "title", "text")
@@ -112,7 +115,7 @@ def _goes_with(thing: Any, kind: str) -> set[str]:
         return {"times"} if kind == "profile" else {"limits", "steps", "check"}
     if isinstance(thing, PumpedSteps):
         return {"limits", "check"}
-    return set() if isinstance(thing, (Check, Medium)) else {"limits"}
+    return set() if isinstance(thing, (Check, Medium, Terms)) else {"limits"}
 
 
 def _refuse_what_does_not_go(thing: Any, kind: str, given: dict[str, Any]) -> None:
@@ -138,9 +141,12 @@ def _draw(thing: Any, kind: str, limits: Any, steps: Any, check: Any, times: Any
     from flatplan.show.plot_medium import plot_medium
     from flatplan.show.plot_profile import plot_profile
     from flatplan.show.plot_steps import plot_pumped, plot_steps
+    from flatplan.show.plot_terms import plot_terms
 
     if isinstance(thing, Medium):
         return plot_medium(thing, system, axes)
+    if isinstance(thing, Terms):
+        return plot_terms(thing, axes)
     if isinstance(thing, Plan):
         return plot_profile(thing, times, system, axes) if kind == "profile" else plot_plan(thing, limits, steps, check, system, axes)
     if isinstance(thing, PumpedSteps):

@@ -15,7 +15,7 @@ from flatplan.show.job import Job
 from flatplan.show.page import document, element, paragraphs, section
 from flatplan.show.report_evidence import certificate_part, confirmation_part, verdict_part
 from flatplan.show.report_field import cautions_part, footer, left_out_part, rate_part, signatures, sources_part, use_part
-from flatplan.show.report_figures import check_figures, plan_figures
+from flatplan.show.report_figures import check_figures, plan_figures, terms_figure
 from flatplan.show.report_inputs import inputs_part
 from flatplan.show.report_job import default_title, job_paragraph, key_numbers, standing
 from flatplan.show.report_series import series_part
@@ -158,7 +158,7 @@ def report_html(
             anchor="inputs",
         ),
         section("The series, to read", series_part(plan, units), anchor="series"),
-        section("Certificate of the series", certificate_part(plan, units), anchor="certificate"),
+        section("Certificate of the series", certificate_part(plan, units), terms_figure(plan, units), anchor="certificate"),
         section(
             "Confirmation",
             confirmation_part(job, check, steps_check, units),

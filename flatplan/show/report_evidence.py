@@ -85,8 +85,8 @@ def certificate_part(plan: Plan, system: str) -> Markup:
     else:
         words += ", to be weighed against what the pump and its meter resolve."
     converges = (
-        f"The Gevrey order of the moves is {significant(certificate.order)}, below 2, so the series converges for every duration of this "
-        f"medium. The smallest radius of its bound is {duration(certificate.radius)}; the arithmetic was made in {certificate.digits} "
+        f"The Gevrey order of the moves is {significant(certificate.order)} ({certificate.convergence}). "
+        f"The smallest radius of its bound is {duration(certificate.radius)}; the arithmetic was made in {certificate.digits} "
         "decimal digits."
     )
     rows = []
@@ -173,7 +173,8 @@ def _check_numbers(check: Check, span: float, what: str, system: str) -> Markup:
             ("largest departure of the target", f"{error(check.target_error)}, on {moment(check.when, span)}"),
             ("allowed", error(check.allowed * check.target_change)),
             ("departure when the target ends", error(check.settling_error)),
-            ("error of the model itself, estimated", error(check.grid_error)),
+            ("error of the model itself at the target, estimated", error(check.grid_error)),
+            ("error of the model itself at the well, estimated", f"{significant(check.other_error, 2)} of the pressure changes there"),
             ("volume balance: injected less leaked less stored", f"{significant(check.mass_balance, 2)} of the injected volume"),
             ("modes of the model", str(check.modes)),
         ],

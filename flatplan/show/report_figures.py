@@ -8,7 +8,7 @@ from flatplan.decide import Verdict
 from flatplan.flat import Plan
 from flatplan.numeric import Check
 from flatplan.show.job import Job
-from flatplan.show.numbers import amount, duration
+from flatplan.show.numbers import amount, duration, significant
 from flatplan.show.page import Markup, joined, picture
 from flatplan.show.plot import plot
 from flatplan.show.quantities import is_radial, joins, zones_of
@@ -61,6 +61,22 @@ def medium_figure(plan: Plan, system: str) -> Markup:
         "storage of the rock along the path."
     )
     return _picture(plot(medium, units=system), alternative, "The path, with the mobility and the storage of its rock.")
+
+
+def terms_figure(plan: Plan, system: str) -> Markup:
+    """The series of the injection rate term by term."""
+    terms = plan.terms()
+    left_out = significant(terms.left_out / (terms.peak or 1.0), 2)
+    alternative = (
+        f"The terms of the injection rate over its peak, on a logarithmic axis, falling until the last one used, term {terms.cut}; all "
+        f"later terms together are at most {left_out} of the peak."
+    )
+    caption = (
+        "The series of the injection rate converges: each term (circles: its largest size over time; solid: its proven bound) is in the "
+        f"end far below the one before, and behind the cut after term {terms.cut} all that is left (dashed: proven bound) is below the "
+        "tolerance."
+    )
+    return _picture(plot(terms, units=system), alternative, caption)
 
 
 def check_figures(job: Job, check: Check | None, verdict: Verdict | None, system: str) -> Markup:

@@ -45,7 +45,7 @@ def series_part(plan: Plan, system: str) -> Markup:
     ]
     if written:
         parts.append(element("p", "In symbols, all in SI units: ", *_symbols(medium, written), class_="small"))
-    elif all(s.uniform for s in medium.segments):
+    elif medium.uniform:
         parts.append(
             element("p", "In symbols the coefficients of this medium are too long for a page; medium.series gives them.", class_="small")
         )

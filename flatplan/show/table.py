@@ -8,18 +8,20 @@ from flatplan.channels import Channels
 from flatplan.decide import Limits, Verdict
 from flatplan.field import PumpedSteps
 from flatplan.flat import Certificate, Plan, Target
+from flatplan.flat.terms import Terms
 from flatplan.flat.volumes import Volumes
 from flatplan.numeric import Check, Steps
 from flatplan.records import one_of
 from flatplan.show.table_histories import channels_columns, frame, plan_columns, pumped_columns, steps_columns, volumes_columns
 from flatplan.show.table_records import certificate_table, check_table, limits_table, medium_table, target_table, verdict_table
+from flatplan.show.table_terms import terms_columns
 from flatplan.site import Medium
 from flatplan.units import SYSTEMS
 
 if TYPE_CHECKING:
     import pandas as pd
 
-_TAKES = "a plan, channels, steps, a verdict, a certificate, a check, a medium, a target, limits or volumes"
+_TAKES = "a plan, channels, steps, a verdict, a certificate, terms, a check, a medium, a target, limits or volumes"
 # PumpedSteps are Steps too, so they stand first
 _TABLES: tuple[tuple[type, Any], ...] = (
     (PumpedSteps, lambda thing, system: frame(pumped_columns(thing), system)),
@@ -27,6 +29,7 @@ _TABLES: tuple[tuple[type, Any], ...] = (
     (Channels, lambda thing, system: frame(channels_columns(thing), system)),
     (Verdict, verdict_table),
     (Certificate, certificate_table),
+    (Terms, lambda thing, system: frame(terms_columns(thing), system)),
     (Check, check_table),
     (Medium, medium_table),
     (Target, target_table),
@@ -40,10 +43,11 @@ def table(thing: Any, *, every: Any = None, units: str = "SI") -> pd.DataFrame:
 
     Parameters
     ----------
-    thing : Plan, PumpedSteps, Steps, Channels, Verdict, Certificate, Check, Medium, Target, Limits or Volumes
+    thing : Plan, PumpedSteps, Steps, Channels, Verdict, Certificate, Terms, Check, Medium, Target, Limits or Volumes
         A plan is read at even times and at its end; steps give the rate table that goes to the field, with the
-        pressures that the independent model expects when each step ends; a verdict gives one row a finding; a medium
-        gives its path, zones with rock, fluid and leakage, the places of a varying rock, target face and well.
+        pressures that the independent model expects when each step ends; a verdict gives one row a finding; a
+        certificate one row a channel; the terms of a channel (``plan.terms("bottomhole_pressure")``) one row a term; a medium
+        its path, zones with rock, fluid and leakage, the places of a varying rock, target face and well.
     every : float, str or quantity, optional
         Spacing of a plan's rows [s]; by default a round one that makes at most about 60 rows.
     units : {"SI", "metric", "field"}

@@ -96,6 +96,11 @@ class Medium(Record):
     # --- the coefficients along the path -------------------------------------------------------
 
     @property
+    def uniform(self) -> bool:
+        """Whether rock and fluid are the same everywhere in each zone."""
+        return all(segment.uniform for segment in self.segments)
+
+    @property
     def length(self) -> float:
         """Length L of the path from the target face to the sandface [m]."""
         return self.segments[-1].end
@@ -232,7 +237,7 @@ class Medium(Record):
 
     def _title(self) -> str:
         count = len(self.segments)
-        if not all(s.uniform for s in self.segments):
+        if not self.uniform:
             return f"Medium: {self.flow} flow, rock varying along the path ({count} pieces)"
         return f"Medium: {self.flow} flow, {count} zone{'s' if count > 1 else ''}"
 
