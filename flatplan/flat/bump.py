@@ -39,13 +39,14 @@ class BumpTable:
     exponent: np.ndarray  # (N,) int
 
     def weighted(self, mantissa: np.ndarray, exponent: np.ndarray, first: int = 0) -> np.ndarray:
-        """``b^(k)/k! · mantissa · 2^exponent`` for k = first … K, all powers of two joined before use.
+        """``b^(k)/k! · mantissa · 2^exponent`` for k = first … first + len(mantissa) - 1, all powers of two joined before use.
 
-        Shape (K + 1 - first, N).
+        Shape (len(mantissa), N).
         """
-        k = np.arange(first, self.rows.shape[0])[:, None]
+        last = first + mantissa.size
+        k = np.arange(first, last)[:, None]
         shift = k * self.order_exponent[None, :] + self.exponent[None, :] + exponent[:, None]
-        return np.ldexp(self.rows[first:] * mantissa[:, None], np.clip(shift, -100_000, 100_000))
+        return np.ldexp(self.rows[first:last] * mantissa[:, None], np.clip(shift, -100_000, 100_000))
 
 
 def bump_table(left: np.ndarray, right: np.ndarray, gamma: float, orders: int) -> BumpTable:

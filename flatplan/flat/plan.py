@@ -20,6 +20,8 @@ from flatplan.flat.volumes import Volumes
 from flatplan.records import Record, one_of
 from flatplan.site import Medium
 
+_CHUNK = 32768  # times at once: bounds what is held beside the result
+
 # Channels that are another channel's series from another derivative on.
 SERIES_NAME = {"injected_volume": ("injection_rate", -1)}
 
@@ -90,23 +92,29 @@ class Plan(Record):
     def rows(self, wanted: list[tuple[str, int]], times: np.ndarray) -> np.ndarray:
         """Several (channel, derivative) pairs at once, shape (len(wanted), len(times)), as `evaluate` gives them one by one.
 
-        Pairs whose series start at the same derivative share one pass.
+        All share one table of the bump's derivatives.
         """
         out = np.empty((len(wanted), times.size))
+        for start in range(0, times.size, _CHUNK):
+            self._fill(out[:, start : start + _CHUNK], wanted, times[start : start + _CHUNK])
+        return out
+
+    def _fill(self, out: np.ndarray, wanted: list[tuple[str, int]], times: np.ndarray) -> None:
         groups: dict[int, list[tuple[int, str]]] = {}
         for row, (channel, derivative) in enumerate(wanted):
             name, shift = SERIES_NAME.get(channel, (channel, 0))
             groups.setdefault(shift + derivative, []).append((row, name))
+        found = self._sums({shift: [name for _, name in members] for shift, members in groups.items()}, times)
         for shift, members in groups.items():
-            rows = [row for row, _ in members]
-            out[rows] = self._sum_shift([name for _, name in members], times, shift)
-        return out
+            out[[row for row, _ in members]] = found[shift]
 
-    def _sum_shift(self, names: list[str], times: np.ndarray, shift: int) -> np.ndarray:
+    def _sums(self, names: dict[int, list[str]], times: np.ndarray) -> dict[int, np.ndarray]:
+        """Series by name, for each derivative of them."""
         if self.extended is not None:
-            return self.extended.evaluate(names, times, shift)
+            return {shift: self.extended.evaluate(each, times, shift) for shift, each in names.items()}
         most = max(self.series.terms)
-        return self.series.evaluate(np.array([scaled_coefficients(self.medium, name, most) for name in names]), times, shift)
+        hats = {shift: np.array([scaled_coefficients(self.medium, name, most) for name in each]) for shift, each in names.items()}
+        return self.series.evaluate_all(hats, times)
 
     def rate(self, times: Any) -> np.ndarray:
         """Injection rate [m³/s] at ``times`` [s], shape (len(times),)."""
@@ -134,7 +142,7 @@ class Plan(Record):
         values = dict(zip(CHANNELS, self.rows([(name, 0) for name in CHANNELS], t), strict=True))
         for name, (kind, _) in CHANNELS.items():
             if kind == "pressure":
-                values[name] = values[name] + self.target.rest_pressure
+                values[name] += self.target.rest_pressure
         if self.medium.face.held:  # there the channel is the rate through the face
             values["target_pressure"] = self.target.pressure(t)
         return Channels(times=t, **values, target_kind=self.target.kind)
@@ -180,7 +188,7 @@ class Plan(Record):
         Volumes
         """
         t = units.si_array(self.end if times is None else times, "time", "times")
-        in_rock = self._sum_shift(["stored_volume"], t, 0)[0]
+        in_rock = self._sums({0: ["stored_volume"]}, t)[0][0]
         injected, bottomhole = self.rows([("injected_volume", 0), ("bottomhole_pressure", 0)], t)
         stored = in_rock + self.medium.well.storage * bottomhole
         if self.medium.face.storage:

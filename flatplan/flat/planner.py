@@ -133,13 +133,10 @@ class _Planner:
 
     def _rows(self, sums: SeriesSum, *, sizes: bool = False) -> dict[tuple[str, int], np.ndarray]:
         most = max(sums.terms)
-        out = {}
-        for shift in (0, -1, 1):
-            names = [name for name, s in _DECIDING if s == shift]
-            scaled = np.array([scaled_coefficients(self.medium, name, most) for name in names])
-            values = sums.evaluate(scaled, self.grid, shift, sizes=sizes)
-            out.update({(name, shift): row for name, row in zip(names, values, strict=True)})
-        return out
+        names = {shift: [name for name, s in _DECIDING if s == shift] for shift in (0, -1, 1)}
+        hats = {shift: np.array([scaled_coefficients(self.medium, name, most) for name in each]) for shift, each in names.items()}
+        found = sums.evaluate_all(hats, self.grid, sizes=sizes)
+        return {(name, shift): row for shift, each in names.items() for name, row in zip(each, found[shift], strict=True)}
 
     def _peaks(self, sums: SeriesSum) -> tuple[dict, dict]:
         peak = {key: float(np.abs(row).max()) for key, row in self._rows(sums).items()}

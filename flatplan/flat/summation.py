@@ -17,7 +17,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from flatplan.flat.bump import bump_table
+from flatplan.flat.bump import BumpTable, bump_table
 from flatplan.flat.rise import Rise
 
 _CHUNK = 4096  # times at once: bounds memory, keeps the table in cache
@@ -98,44 +98,61 @@ class SeriesSum:
         sizes : bool
             Sum the sizes of the terms instead: what cancellation and rounding are judged by.
         """
-        out = np.zeros((scaled.shape[0], times.size))
+        return self.evaluate_all({shift: scaled}, times, sizes=sizes)[shift]
+
+    def evaluate_all(self, scaled: dict[int, np.ndarray], times: np.ndarray, *, sizes: bool = False) -> dict[int, np.ndarray]:
+        """The same for several derivatives, {shift: ĉ}, from one table of the bump."""
+        out = {shift: np.zeros((hats.shape[0], times.size)) for shift, hats in scaled.items()}
+        if sizes:
+            scaled = {shift: np.abs(hats) for shift, hats in scaled.items()}
         for rise, most in zip(self.rises, self.terms, strict=True):
-            self._add(out, rise, most, np.abs(scaled) if sizes else scaled, times, shift, sizes)
+            self._add(out, rise, most, scaled, times, sizes)
         return out
 
-    def _add(self, out: np.ndarray, rise: Rise, most: int, scaled: np.ndarray, times: np.ndarray, shift: int, sizes: bool) -> None:
+    def _add(self, out: dict, rise: Rise, most: int, scaled: dict, times: np.ndarray, sizes: bool) -> None:
         live = np.flatnonzero(times > rise.start)
-        for k, factor in low_factors(self.t_d, shift, rise.lift):
-            column = scaled[:, k]
-            if k <= most and np.any(column):
-                value = (rise.low_order_size if sizes else rise.low_order)(times[live], k + shift)
-                out[:, live] += factor * column[:, None] * value[None, :]
-        # k + shift = lift is the bump itself; with a large shift the bump's first orders are skipped
-        lowest = max(rise.lift - shift, 0)
-        coefficients = scaled[:, lowest : most + 1]
-        if most < lowest or not np.any(coefficients):
+        if not live.size:
             return
-        weights = series_weights(self.t_d / rise.width, lowest, lowest + shift - rise.lift, most - lowest + 1)
-        factor = rise.bump_factor * rise.width**-shift
+        series = []
+        for shift, hats in scaled.items():
+            for k, factor in low_factors(self.t_d, shift, rise.lift):
+                column = hats[:, k]
+                if k <= most and np.any(column):
+                    value = (rise.low_order_size if sizes else rise.low_order)(times[live], k + shift)
+                    out[shift][:, live] += factor * column[:, None] * value[None, :]
+            # k + shift = lift is the bump itself; with a large shift the bump's first orders are skipped
+            lowest = max(rise.lift - shift, 0)
+            if most >= lowest and np.any(hats[:, lowest : most + 1]):
+                weights = series_weights(self.t_d / rise.width, lowest, lowest + shift - rise.lift, most - lowest + 1)
+                series.append((out[shift], hats[:, lowest : most + 1] * (rise.bump_factor * rise.width**-shift), weights))
+        if not series:
+            return
+        orders = max(weights.first + weights.mantissa.size - 1 for _, _, weights in series)
         for after, sign in rise.bumps:
-            for at, table in corner_tables(rise, after, times, weights):
-                if sizes:
-                    out[:, at] += abs(factor) * (coefficients @ np.abs(table))
-                else:
-                    out[:, at] += (sign * factor) * (coefficients @ table)
+            for at, table in bump_tables(rise, after, times, orders):
+                for rows, coefficients, weights in series:
+                    values = table.weighted(weights.mantissa, weights.exponent, weights.first)
+                    if sizes:
+                        rows[:, at] += np.abs(coefficients) @ np.abs(values)
+                    else:
+                        rows[:, at] += (sign * coefficients) @ values
 
 
-def corner_tables(rise: Rise, after: float, times: np.ndarray, weights: Weights) -> Iterator[tuple[np.ndarray, np.ndarray]]:
-    """(where, weighted derivatives of the bump) for each chunk of ``times`` inside the bump that begins ``after`` the rise.
+def bump_tables(rise: Rise, after: float, times: np.ndarray, orders: int) -> Iterator[tuple[np.ndarray, BumpTable]]:
+    """(where, the bump's derivatives to ``orders``) for each chunk of ``times`` inside the bump that begins ``after`` the rise.
 
-    The table has shape (len(weights), len(where)). Places are taken from the start of the rise: a sum such as
-    start + width would be rounded to the clock's own grain, which matters for a short corner years from the start.
+    Places are taken from the start of the rise: a sum such as start + width would be rounded to the clock's own grain,
+    which matters for a short corner years from the start.
     """
     elapsed = (times - rise.start) - after
     left_all = elapsed / rise.width
     right_all = (rise.width - elapsed) / rise.width
     inside = np.flatnonzero((left_all > 0.0) & (right_all > 0.0))
-    count = weights.mantissa.size
     for at in np.array_split(inside, math.ceil(inside.size / _CHUNK)) if inside.size else ():
-        table = bump_table(left_all[at], right_all[at], rise.gamma, weights.first + count - 1)
+        yield at, bump_table(left_all[at], right_all[at], rise.gamma, orders)
+
+
+def corner_tables(rise: Rise, after: float, times: np.ndarray, weights: Weights) -> Iterator[tuple[np.ndarray, np.ndarray]]:
+    """(where, weighted derivatives of the bump), the latter of shape (len(weights), len(where))."""
+    for at, table in bump_tables(rise, after, times, weights.first + weights.mantissa.size - 1):
         yield at, table.weighted(weights.mantissa, weights.exponent, weights.first)

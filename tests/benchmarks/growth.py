@@ -22,6 +22,7 @@ def growth(quick: bool) -> list[Row]:
         _moves(repeats, (2, 16) if quick else (2, 8, 32)),
         _making(repeats, (2, 16) if quick else (2, 8, 32)),
         _terms(repeats),
+        *_five_zones(repeats),
         _zones(repeats, (4, 64, 256) if quick else (4, 16, 64, 256, 1024)),
     ]
 
@@ -79,3 +80,19 @@ def _zones(repeats: int, counts: Sequence[int]) -> Row:
         fp.zoned(zones).coefficients("injection_rate", 40)
 
     return _row("growth of coefficients with zones, 40 terms", counts, [lambda n=n: fresh(n) for n in counts], repeats, 1.0)
+
+
+def _five_zones(repeats: int) -> list[Row]:
+    """150 coefficients of a chain of five zones, without and with leakage, nothing known beforehand."""
+
+    def fresh(leakage: float) -> None:
+        zones = [
+            fp.Zone(rock=rock(k * 1e-14), fluid=fluid(), length=28.0, area=6000.0, leakage=leakage) for k in (4.0, 1.0, 9.0, 2.0, 5.0)
+        ]
+        fp.zoned(zones).coefficients("injection_rate", 150)
+
+    plain, leaky = by_turns([lambda: fresh(0.0), lambda: fresh(1e-16)], repeats)
+    return [
+        Row("150 coefficients of five zones", "", duration(plain), "", "", "", "", None),
+        Row("the same with leakage", "without", duration(leaky), duration(plain), f"{leaky / plain:.2g} × its time", "", "", None),
+    ]
