@@ -16,7 +16,7 @@ from ball_reference import precision
 from flint import arb
 
 import flatplan as fp
-from flatplan.flat.generating import scaled_coefficients
+from flatplan.flat.generating import generating_table, pressure_at, scaled_coefficients
 from flatplan.flat.precise import precise_pressure, precise_scaled
 
 UNIFORM = [name for name in media.GEOMETRIES if name != "varying rock"]
@@ -33,8 +33,8 @@ def digits_right(value: mpmath.mpf, ball: arb) -> float:
         return math.inf if error == 0 else -float(error.log().mid()) / math.log(2.0)
 
 
-def assert_digits(medium, orders, bits):
-    exact = series.coefficients(medium, orders, more=60)
+def assert_digits(medium, orders, bits, more=60):
+    exact = series.coefficients(medium, orders, more=more)
     for name, row in zip(series.CHANNELS, precise_scaled(medium, series.CHANNELS, orders, bits), strict=True):
         assert len(row) == orders + 1
         worst = min(digits_right(v, e) for v, e in zip(row, exact[name], strict=True))
@@ -88,8 +88,17 @@ def test_double_precision_agrees_with_it_for_every_face(face, leakage):
             np.testing.assert_allclose(got, exact, rtol=1e-12, atol=0.0, err_msg=name)
 
 
-def test_a_rock_that_varies_has_none():
-    assert precise_scaled(media.medium("varying rock"), ("sandface_pressure",), 8, 80) is None
+@pytest.mark.parametrize(("face", "leakage"), [("sealed", "tight"), ("leaky and storing", "leaking")])
+def test_a_rock_that_varies_is_crossed_to_as_many_digits(face, leakage):
+    assert_digits(media.medium("varying rock", face, "skin and storage", leakage), 5, 100, more=2)
+
+
+def test_the_pressure_inside_a_varying_zone_is_that_of_a_path_that_ends_there():
+    made = media.medium("varying rock", "sealed")
+    x = 0.37 * made.length
+    found = precise_pressure(made, x, 6, 100)
+    table = generating_table(made, 8)
+    np.testing.assert_allclose([float(v) for v in found], pressure_at(table, np.array([x]))[:7, 0], rtol=1e-11)
 
 
 def test_the_target_channel_is_the_flat_output():

@@ -55,7 +55,6 @@ class ExtendedSum:
     Attributes
     ----------
     medium : Medium
-        Of uniform zones.
     series : SeriesSum
     digits : int
         Decimal digits of the largest term that are carried.
@@ -74,9 +73,7 @@ class ExtendedSum:
 
     @cached_property
     def _scaled(self) -> list[list[mpmath.mpf]]:
-        known = precise_scaled(self.medium, NAMES, max(self.series.terms), self.bits)
-        assert known is not None  # the planner takes this path for uniform zones only
-        return known
+        return precise_scaled(self.medium, NAMES, max(self.series.terms), self.bits)
 
     def evaluate(self, names: list[str], times: np.ndarray, shift: int) -> np.ndarray:
         """Series of `NAMES` (or "target_pressure") at ``times`` [s], shape (len(names), N); ``shift`` as in `SeriesSum`."""

@@ -146,7 +146,7 @@ class _Planner:
     def _drowned(self, sums: SeriesSum, peak: dict, size: dict) -> bool:
         """Whether the rounding of double precision reaches some hundredths of a peak, and more digits are held."""
         lost = (_ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)) * _UNIT
-        return self.medium.uniform and any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
+        return any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
 
     def _target_moved(self, rounding: float) -> float:
         """How far the target can be moved by a rounding of the rate, whatever its course."""
@@ -207,7 +207,7 @@ class _Planner:
         rounding = {key: units_lost * _UNIT * size[key] for key in _DECIDING}
         digits, exact = 16, None
         short = any(rounding[key] > 0.5 * self.tolerance * peak[key] for key in _DECIDING) or self._target_drowned(rounding)
-        if short and self.medium.uniform:
+        if short:
             digits = math.ceil(math.log10(max(size[key] / peak[key] for key in _DECIDING))) + 17
             exact = ExtendedSum(self.medium, sums, digits)
             for shift in (0, -1, 1):

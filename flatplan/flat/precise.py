@@ -8,7 +8,8 @@ In the Laplace domain ``(r^n T p')' = r^n (S s + Λ) p`` on each zone (n = 0, 1,
 and each c_j is carried as a polynomial in s up to the order wanted: the generating functions themselves are
 its coefficients, scaled as elsewhere by t_D^k/(2k)! so that all are of one size. In radial flow a zone is crossed
 in steps of half the radius at most, so that the series fall by at least two with each term; in linear flow one
-step and finitely many terms do. The numbers are integers times 2^-bits, one array entry for each power of s.
+step and finitely many terms do (rock that varies along a zone: `precise_varying`). The numbers are integers times
+2^-bits, one array entry for each power of s.
 """
 
 from __future__ import annotations
@@ -19,15 +20,17 @@ from itertools import pairwise
 
 import mpmath
 import numpy as np
+from gmpy2 import mpz
 
+from flatplan.flat.precise_varying import across_varying
 from flatplan.site import Medium, Segment
 
 _STEP = 0.5  # largest |ρ|/a in one step
 _GUARD = 40
 
 
-def precise_scaled(medium: Medium, channels: tuple[str, ...], orders: int, bits: int) -> list[list[mpmath.mpf]] | None:
-    """``ĉ_0 … ĉ_orders`` of each channel to about ``bits`` bits; None where the rock varies along a zone.
+def precise_scaled(medium: Medium, channels: tuple[str, ...], orders: int, bits: int) -> list[list[mpmath.mpf]]:
+    """``ĉ_0 … ĉ_orders`` of each channel to about ``bits`` bits.
 
     Parameters
     ----------
@@ -39,21 +42,19 @@ def precise_scaled(medium: Medium, channels: tuple[str, ...], orders: int, bits:
 
     Returns
     -------
-    list of list of mpf, or None
+    list of list of mpf
     """
-    if not medium.uniform:
-        return None
     key = f"precise to {orders} in {bits} bits"
     if key not in medium.memory:
-        medium.memory[key] = _carried(medium, medium.segments, orders, bits)
+        medium.memory[key] = _carried(medium, tuple((s, 1.0) for s in medium.segments), orders, bits)
     pressure, rate, stored = medium.memory[key]
     with mpmath.workprec(bits + _GUARD):
         return [_channel(medium, name, pressure, rate, stored) for name in channels]
 
 
 def precise_pressure(medium: Medium, x: float, orders: int, bits: int) -> list[mpmath.mpf]:
-    """``φ̂_0(x) … φ̂_orders(x)`` of a medium of uniform zones to about ``bits`` bits."""
-    before = tuple(replace(s, end=min(s.end, x)) for s in medium.segments if s.start < x)
+    """``φ̂_0(x) … φ̂_orders(x)`` to about ``bits`` bits."""
+    before = tuple((s, min((x - s.start) / s.length, 1.0)) for s in medium.segments if s.start < x)
     if not before:
         first = mpmath.mpf(0 if medium.face.held else 1)
         return [first] + [mpmath.mpf(0)] * orders
@@ -76,31 +77,36 @@ def _channel(medium: Medium, name: str, pressure: list, rate: list, stored: list
     return [f + (storage * bottomhole[k - 1] * (2 * k * (2 * k - 1)) / t_d if k else 0) for k, f in enumerate(rate)]
 
 
-def _carried(medium: Medium, segments: tuple[Segment, ...], orders: int, bits: int) -> tuple[list, list, list]:
-    """φ̂_k and F̂_k at the end of the segments, carried from the target face zone by zone, and ∫ S φ̂_k dx.
+def _carried(medium: Medium, stretches: tuple[tuple[Segment, float], ...], orders: int, bits: int) -> tuple[list, list, list]:
+    """φ̂_k and F̂_k at the end of the stretches (each with the share of it that is crossed), carried zone by zone, and ∫ S φ̂_k dx.
 
     In this scaling an error made early grows by up to e^(2k) on the way, which is less than 3 bits for each order.
     """
     work = bits + _GUARD + 3 * orders
 
-    def whole(value: mpmath.mpf) -> int:
-        return int(mpmath.nint(mpmath.ldexp(value, work)))
+    def whole(value: mpmath.mpf) -> mpz:
+        return mpz(int(mpmath.nint(mpmath.ldexp(value, work))))
 
     with mpmath.workprec(work + 64):
         t_d = mpmath.mpf(medium.travel_time)
         # rates are carried over the first conductance, so that both fields are of the size of a pressure
-        unit = mpmath.mpf(segments[0].mobility) * segments[0].area_factor
-        p, f = np.zeros((2, orders + 1), dtype=object)
+        first = stretches[0][0]
+        unit = mpmath.mpf(first.mobility) * first.area_factor
+        p, f = np.full((2, orders + 1), mpz(0), dtype=object)
         if medium.face.held:
             f[0] = whole(1 / unit)
         else:
-            p[0] = 1 << work
+            p[0] = mpz(1) << work
             f[0] = whole(mpmath.mpf(medium.face.leak) / unit)
             if orders:
                 f[1] = whole(2 * mpmath.mpf(medium.face.storage) / t_d / unit)
         stored = [mpmath.mpf(0)] * (orders + 1)
-        for segment in segments:
-            p, f, content = _across(segment, p, f, t_d, unit, work)
+        for segment, share in stretches:
+            if segment.uniform:
+                part = segment if share == 1.0 else replace(segment, end=segment.start + share * segment.length)
+                p, f, content = _across(part, p, f, t_d, unit, work)
+            else:
+                p, f, content = across_varying(segment, share, p, f, t_d, unit, work)
             stored = [before + mpmath.ldexp(mpmath.mpf(int(v)), -work) for before, v in zip(stored, content, strict=True)]
         pressure = [mpmath.ldexp(mpmath.mpf(int(v)), -work) for v in p]
         rate = [mpmath.ldexp(mpmath.mpf(int(v)), -work) * unit for v in f]
