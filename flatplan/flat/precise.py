@@ -106,7 +106,7 @@ def _carried(medium: Medium, stretches: tuple[tuple[Segment, float], ...], order
                 part = segment if share == 1.0 else replace(segment, end=segment.start + share * segment.length)
                 p, f, content = _across(part, p, f, t_d, unit, work)
             else:
-                p, f, content = across_varying(segment, share, p, f, t_d, unit, work)
+                p, f, content = across_varying(segment, share, p, f, t_d, unit, work, bits)
             stored = [before + mpmath.ldexp(mpmath.mpf(int(v)), -work) for before, v in zip(stored, content, strict=True)]
         pressure = [mpmath.ldexp(mpmath.mpf(int(v)), -work) for v in p]
         rate = [mpmath.ldexp(mpmath.mpf(int(v)), -work) * unit for v in f]
