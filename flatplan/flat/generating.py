@@ -162,35 +162,42 @@ class _Recurrence:
         return phi, level_list[-1], rate_list[-1]
 
 
-def _run(medium: Medium, orders: int) -> GeneratingTable:
-    line = _Recurrence(medium)
-    face = medium.face
-    t_d = medium.travel_time
-    held = face.held
+def _run(medium: Medium, orders: int, known: GeneratingTable | None) -> GeneratingTable:
+    """The recurrence to ``orders``, from where ``known`` ends."""
+    if "generating recurrence" not in medium.memory:
+        medium.memory["generating recurrence"] = _Recurrence(medium)
+    line = medium.memory["generating recurrence"]
+    face, t_d, held = medium.face, medium.travel_time, medium.face.held
     fields: list[np.ndarray] = []
     at_end: list[float] = []
     rate_end: list[float] = []
     stored: list[float] = []
+    first = 0 if known is None else known.orders + 1
+    before = None if known is None else known.pressure[-1]
     source = np.zeros_like(line.nodes)
-    for k in range(orders + 1):
+    for k in range(first, orders + 1):
         if k == 0:
             pressure, rate = (0.0, 1.0) if held else (1.0, face.leak)
         else:
             pressure, rate = 0.0, (2.0 * face.storage / t_d if k == 1 and not held else 0.0)
-            source = line.storage * fields[-1] * (2.0 * k * (2.0 * k - 1.0) / t_d)
-        phi, phi_end, f_end = line.step(source, pressure, rate)
-        fields.append(phi)
+            source = line.storage * before * (2.0 * k * (2.0 * k - 1.0) / t_d)
+        before, phi_end, f_end = line.step(source, pressure, rate)
+        fields.append(before)
         at_end.append(phi_end)
         rate_end.append(f_end)
-        stored.append(float(np.sum(line.weights * line.storage * phi)))
-    return GeneratingTable(line.edges, line.nodes, np.array(fields), np.array(at_end), np.array(rate_end), np.array(stored))
+        stored.append(float(np.sum(line.weights * line.storage * before)))
+    new = np.array(fields), np.array(at_end), np.array(rate_end), np.array(stored)
+    if known is not None:
+        old = known.pressure, known.sandface_pressure, known.sandface_rate, known.stored
+        new = tuple(np.concatenate(pair) for pair in zip(old, new, strict=True))  # type: ignore[assignment]
+    return GeneratingTable(line.edges, line.nodes, *new)
 
 
 def generating_table(medium: Medium, orders: int) -> GeneratingTable:
     """The table for ``medium`` to at least ``orders``; made once and grown when more is asked."""
     held = medium.memory.get("generating")
     if held is None or held.orders < orders:
-        held = _run(medium, max(orders, 48 if held is None else 2 * held.orders))
+        held = _run(medium, max(orders, 48 if held is None else 2 * held.orders), held)
         medium.memory["generating"] = held
     return held
 
