@@ -17,9 +17,8 @@ from flatplan.flat import bounds
 from flatplan.flat.bounds import closed_form_radius, log_closed_form
 from flatplan.flat.bump_integral import bump_integral
 from flatplan.flat.intervals import IV, lower, upper
-from flatplan.flat.remedy import MOST_TERMS
 from flatplan.flat.rise import Rise
-from flatplan.flat.tail import gevrey_radius, tail_table
+from flatplan.flat.tail import MOST_TERMS, gevrey_radius, tail_table
 
 
 def test_an_interval_is_rounded_outwards():

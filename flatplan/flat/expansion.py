@@ -21,11 +21,12 @@ import numpy as np
 from gmpy2 import mpz
 
 from flatplan.flat.bump_rows import BumpRow, bump_row, log2_row_errors, log_height
-from flatplan.flat.corner_curve import NODES, log_sums, orders_needed, places_and_weights, taylor_terms
+from flatplan.flat.corner_curve import NODES, log_largest, log_sums, orders_needed, places_and_weights, taylor_terms
 
 _LN2 = math.log(2.0)
 _TO_SPARE = 8  # orders, so that the sums of other derivatives find the row made
 _BITS_TO_SPARE = 24
+_MANY_BITS = 1200
 _GUARD = 12  # bits below what is allowed at which integers are cut
 
 
@@ -93,6 +94,22 @@ def panel_need(panel: tuple[float, float], gamma: float, weights: Weights, log_a
     best = int(np.argmin(need))
     units = float(errors[fits[best]])
     return PanelNeed(panel, count, terms, int(doublings[fits[best]]), math.ceil(max(need[best], units, 8.0)), units)
+
+
+def panel_needs(panels: list[tuple[float, float]], gamma: float, weights: Weights, log_allowed: np.ndarray) -> list[PanelNeed]:
+    """What each panel takes; one that would take very many bits is halved until it takes fewer, or proves to be of no account."""
+    stack, out = panels[::-1], []
+    while stack:
+        a, b = stack.pop()
+        centre, half = 0.5 * (a + b), 0.5 * (b - a)
+        if np.all(log_largest(centre, half, gamma, weights.logs, weights.first) <= log_allowed):
+            continue
+        need = panel_need((a, b), gamma, weights, log_allowed)
+        if need.bits > _MANY_BITS and half > 1e-3 * centre:
+            stack += [(centre, b), (a, centre)]
+        else:
+            out.append(need)
+    return out
 
 
 def panel_row(need: PanelNeed, gamma: float, first: int, held: BumpRow | None) -> BumpRow:

@@ -19,7 +19,7 @@ from gmpy2 import mpz
 
 from flatplan.flat.bump_rows import FixedWeights, bump_row, log2_row_errors, log_height
 from flatplan.flat.corner_curve import NODES, CornerCurve, largest_growth, panels
-from flatplan.flat.expansion import Expansions, Weights, panel_need, panel_row
+from flatplan.flat.expansion import Expansions, Weights, panel_needs, panel_row
 from flatplan.flat.precise import precise_pressure, precise_scaled
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum, low_factors
@@ -220,8 +220,8 @@ class ExtendedSum:
             allowed = np.where(nothing, 0.0, np.where(np.isfinite(top), np.minimum(allowed, top), allowed - 40.0))
         allowed = np.where(nothing, 0.0, top)
         close = allowed + math.log(_FINEST_CURVE / _FINEST_VALUE)
-        edges = np.array(panels(shape.gamma, weights.logs, weights.first, close)).reshape(-1, 2)
-        needs = [panel_need((float(a), float(b)), shape.gamma, weights, allowed) for a, b in edges]
+        needs = panel_needs(panels(shape.gamma, weights.logs, weights.first, close), shape.gamma, weights, allowed)
+        edges = np.array([need.panel for need in needs]).reshape(-1, 2)
         rows = []
         for need in needs:
             key = (shape.gamma, need.panel)

@@ -9,14 +9,15 @@ import numpy as np
 from flatplan import units
 from flatplan.channels import CHANNELS
 from flatplan.flat.answer import TargetAnswer
+from flatplan.flat.bump_integral import bump_integral
 from flatplan.flat.certificate import Certificate
 from flatplan.flat.extended import ExtendedSum
 from flatplan.flat.generating import scaled_coefficients
 from flatplan.flat.plan import SERIES_NAME, Plan
-from flatplan.flat.remedy import MOST_TERMS, past_the_threshold, too_many_terms
+from flatplan.flat.remedy import past_the_threshold, too_many_terms
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum
-from flatplan.flat.tail import gevrey_radius, tail_table
+from flatplan.flat.tail import MOST_BOUNDED, MOST_TERMS, gevrey_radius, tail_table
 from flatplan.flat.target import LEAST_ORDER, Target
 from flatplan.records import of_type
 from flatplan.site import Medium
@@ -37,6 +38,9 @@ _FIRST_ORDERS = 96
 # tests/test_flat_accuracy.py, where it is compared with ball arithmetic.
 _ROUNDING_UNITS = 40.0
 _ROUNDING_UNITS_PER_TERM = 2.5  # the coefficients' own error grows with their order
+# Leakage: the coefficients are carried from panel to panel by 2×2 matrices, which costs up to 1.1e-14 of each (found: randomised
+# containment), and twice that is allowed for.
+_ROUNDING_UNITS_OF_LEAKAGE = 200.0
 _UNIT = 2.0**-53
 # Share of the change by which the double path's rounding may move the target before more digits are taken.
 _TARGET_SHARE = 1e-7
@@ -145,8 +149,13 @@ class _Planner:
 
     def _drowned(self, sums: SeriesSum, peak: dict, size: dict) -> bool:
         """Whether the rounding of double precision reaches some hundredths of a peak, and more digits are held."""
-        lost = (_ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)) * _UNIT
+        lost = self._units_lost(sums) * _UNIT
         return any(lost * size[key] > 0.03 * peak[key] for key in _DECIDING)
+
+    def _units_lost(self, sums: SeriesSum) -> float:
+        """Rounding of the double path, in units of 2^-53 times the sum of the sizes of the terms."""
+        leakage = _ROUNDING_UNITS_OF_LEAKAGE if any(segment.leakage for segment in self.medium.segments) else 0.0
+        return _ROUNDING_UNITS + leakage + _ROUNDING_UNITS_PER_TERM * max(sums.terms)
 
     def _target_moved(self, rounding: float) -> float:
         """How far the target can be moved by a rounding of the rate, whatever its course."""
@@ -180,14 +189,14 @@ class _Planner:
             if table is None or table.shape[1] <= orders:
                 table = self.tails[key] = self._with_target(tail_table(self.medium, rise, _DECIDING, orders))
             # the closed form's rest should be negligible, or the cut comes later than it need
-            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_TERMS:
+            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_BOUNDED:
                 return table
-            orders = min(2 * orders, MOST_TERMS)
+            orders = min(2 * orders, MOST_BOUNDED)
 
     def _with_target(self, tails: np.ndarray) -> np.ndarray:
         """The same with a last row: how far the target is moved by what is left out of the rate."""
         rate, volume = (tails[_DECIDING.index(("injection_rate", shift))] for shift in (0, -1))
-        with np.errstate(invalid="ignore"):
+        with np.errstate(invalid="ignore", over="ignore"):
             moved = np.fmin(self.answer.by_volume * volume, self.answer.by_rate * rate)
         return np.vstack([tails, moved])
 
@@ -196,14 +205,14 @@ class _Planner:
 
     def _terms(self, rise: Rise, peak: dict) -> int:
         allowed = self.tolerance * np.array([*(peak[key] for key in _DECIDING), self.target.largest_change]) / (2.0 * self.overlap)
-        fits = np.all(self._tail(rise, allowed) <= allowed[:, None], axis=0)
+        fits = np.all(self._tail(rise, allowed)[:, : MOST_TERMS + 1] <= allowed[:, None], axis=0)
         if not np.any(fits):
             raise ValueError(too_many_terms(self.medium, rise, self.tolerance, LEAST_ORDER))
         return max(int(np.argmax(fits)), 2)
 
     def _certified(self, sums: SeriesSum, peak: dict, size: dict) -> Plan:
         tails = _summed_tails(self.rises, [self._held_tail(rise)[:, n] for rise, n in zip(self.rises, sums.terms, strict=True)])
-        units_lost = _ROUNDING_UNITS + _ROUNDING_UNITS_PER_TERM * max(sums.terms)
+        units_lost = self._units_lost(sums)
         rounding = {key: units_lost * _UNIT * size[key] for key in _DECIDING}
         digits, exact = 16, None
         short = any(rounding[key] > 0.5 * self.tolerance * peak[key] for key in _DECIDING) or self._target_drowned(rounding)
@@ -230,7 +239,7 @@ class _Planner:
             if name == "target_pressure":
                 top = self.target.largest_change
                 tail_out[name] = float(tails[-1])
-                rounding_out[name], peak_out[name], cancellation[name] = 8.0 * _UNIT * top, top, 1.0
+                rounding_out[name], peak_out[name], cancellation[name] = _level_rounding(self.rises), top, 1.0
                 continue
             key = (SERIES_NAME.get(name, (name, 0))[0], shifts[name])
             tail_out[name] = float(tails[index[key]])
@@ -260,6 +269,22 @@ def _grid(target: Target, per_corner: int = 160) -> np.ndarray:
     for rise in target.rises:
         parts.extend(np.linspace(start, start + rise.width, per_corner) for start, _ in rise.corners)
     return np.unique(np.concatenate(parts))
+
+
+def _level_rounding(rises: tuple[Rise, ...]) -> float:
+    """Bound on the rounding of the target itself: of each rise's parts (a short ramp is a difference of large ones), and of the time.
+
+    A time is off by some 2^-53 of itself, which counts as much as the rise is steep.
+    """
+    total = 0.0
+    for rise in rises:
+        steepest = 1.0 / bump_integral(rise.gamma).total
+        parts = 1.0
+        if rise.ramp > 0.0:
+            steepest = min(steepest, rise.width / rise.ramp)
+            parts += 0.5 * rise.width / rise.ramp
+        total += abs(rise.weight) * (8.0 * parts + 6.0 * steepest * (1.0 + rise.ramp / rise.width))
+    return total * _UNIT
 
 
 def _largest_overlap(rises: tuple[Rise, ...]) -> int:

@@ -9,13 +9,11 @@ from dataclasses import replace
 import numpy as np
 
 from flatplan import units
-from flatplan.flat.bump import MOST_ORDERS
 from flatplan.flat.generating import scaled_coefficients
 from flatplan.flat.rise import Rise
-from flatplan.flat.tail import tail_table
+from flatplan.flat.tail import MOST_BOUNDED, MOST_TERMS, tail_table
 from flatplan.site import Medium
 
-MOST_TERMS = MOST_ORDERS - 2
 _LONGEST = 1e4  # times the duration asked
 
 
@@ -26,7 +24,7 @@ def too_many_terms(medium: Medium, rise: Rise, tolerance: float, least_order: fl
 
     def fits(candidate: Rise) -> bool:
         shifts = (0, -1, 1)
-        tails = tail_table(medium, candidate, tuple(("injection_rate", s) for s in shifts), MOST_TERMS)[:, -1]
+        tails = tail_table(medium, candidate, tuple(("injection_rate", s) for s in shifts), MOST_BOUNDED)[:, MOST_TERMS]
         return bool(np.all(tails <= 0.25 * tolerance * _least_peaks(medium, candidate)))
 
     def stretched(factor: float) -> Rise:

@@ -19,12 +19,16 @@ import numpy as np
 from scipy.special import gammaln
 
 from flatplan.flat.bounds import closed_form_radius, log_bump_bounds, radius_interval
+from flatplan.flat.bump import MOST_ORDERS
 from flatplan.flat.bump_integral import bump_integral
 from flatplan.flat.coefficient_bounds import scaled_bounds, scaled_sizes
 from flatplan.flat.intervals import IV, upper
 from flatplan.flat.rise import Rise
 from flatplan.site import Medium
 
+MOST_TERMS = MOST_ORDERS - 2  # that a series may use
+# Orders bounded one by one go further: with a low Gevrey order the closed form is close only after many hundreds.
+MOST_BOUNDED = 1300
 _INTEGRAL_SLACK = 1e-9  # relative, on the quadrature of the bump's integral (its error is near 1e-15)
 
 
@@ -68,7 +72,8 @@ def tail_table(medium: Medium, rise: Rise, channels: tuple[tuple[str, int], ...]
     for row, (channel, shift) in enumerate(channels):
         sup = rise_log_bounds(rise.width, rise.ramp, rise.gamma, orders + max(shift, 0))
         at = np.maximum(k.astype(int) + shift, 0)
-        bound = scaled_sizes(medium, channel, orders)[1:]
+        own = min(orders, MOST_TERMS)
+        bound = np.concatenate([scaled_sizes(medium, channel, own)[1:], scaled_bounds(medium, channel, k[own:])])
         with np.errstate(divide="ignore", over="ignore"):
             terms = np.exp(np.log(bound) + shape + sup[at] + math.log(abs(rise.weight)))
             rest = _rest(medium, rise, channel, shift, orders)

@@ -15,13 +15,12 @@ from scipy.special import gammaln
 
 from flatplan import units
 from flatplan.channels import described
-from flatplan.flat.bump import MOST_ORDERS
 from flatplan.flat.certificate import Certificate
 from flatplan.flat.coefficient_bounds import scaled_sizes
 from flatplan.flat.generating import scaled_coefficients
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum, corner_tables, low_factors, series_weights
-from flatplan.flat.tail import rise_log_bounds, tail_table
+from flatplan.flat.tail import MOST_BOUNDED, MOST_TERMS, rise_log_bounds, tail_table
 from flatplan.flat.target import Target
 from flatplan.records import Record
 from flatplan.site import Medium
@@ -130,7 +129,7 @@ def channel_terms(
     """
     one_term = channel == "target_pressure"  # the target itself
     cut, fewest = (0, 0) if one_term else (max(series.terms), min(series.terms))
-    last = min(cut + max(8, math.ceil(0.25 * cut)), MOST_ORDERS - 2)
+    last = min(cut + max(8, math.ceil(0.25 * cut)), MOST_TERMS)
     name, shift = source
     scaled = scaled_coefficients(medium, name, last)
     allowed = certificate.tolerance * certificate.peak[channel]
@@ -234,9 +233,9 @@ def _tail(medium: Medium, rise: Rise, source: tuple[str, int], last: int, allowe
     while True:
         table = tail_table(medium, rise, (source,), orders)[0]
         # a rest by the closed form that shows would make the tail larger than it need be
-        if table[-1] <= 1e-6 * min(allowed, table[last]) or orders >= MOST_ORDERS - 2:
+        if table[-1] <= 1e-6 * min(allowed, table[last]) or orders >= MOST_BOUNDED:
             break
-        orders = min(2 * orders, MOST_ORDERS - 2)
+        orders = min(2 * orders, MOST_BOUNDED)
     return table[: last + 1].copy()
 
 
