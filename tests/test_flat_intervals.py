@@ -96,3 +96,17 @@ def test_below_two_the_tail_falls_for_every_length_and_stays_below_the_classical
                 assert math.log(table[n]) <= rest[n] + 1e-6
         if math.isfinite(table[-1]):
             assert np.all(np.diff(table[1:]) <= 0.0)
+
+
+def test_the_constants_of_a_certificate_bound_every_derivative_of_the_target():
+    """sup|y^(k)| ≤ M (k!)^s / ρ^k for a sum of unlike moves."""
+    medium = slab()
+    over = 3.0 * medium.travel_time
+    target = fp.Target(start=0.0).move(by=1e6, over=over, order=1.5).move(by=-4e5, over=2.0 * over, order=1.8, easing=0.3, at=0.5 * over)
+    c = fp.feedforward(medium, target).certificate
+    y = target.derivatives(np.linspace(0.0, target.end, 2001), 60)
+    for k in range(1, 61):
+        bound = c.log_constant + c.order * math.lgamma(k + 1.0) - k * math.log(c.radius)
+        assert math.log(np.abs(y[k]).max()) <= bound
+    one = fp.feedforward(medium, fp.Target(start=0.0).move(by=1e6, over=over, order=1.5)).certificate
+    assert one.log_constant < c.log_constant < one.log_constant + math.log(1e9)

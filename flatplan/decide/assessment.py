@@ -102,7 +102,7 @@ def _accuracy(plan: Plan) -> Finding:
     rounding = max(c.rounding[n] / c.peak[n] for n in c.tail if c.peak[n])
     reason = (
         f"With {c.terms} terms in {c.digits} digits, what the series leaves out is at most {tail:.1e} of a channel's peak (proven) "
-        f"and its rounding about {rounding:.1e} (estimated)."
+        f"and its rounding at most {rounding:.1e} ({c.rounding_basis})."
     )
     remedy = "" if holds else "Take a longer duration or a larger easing: the terms of this series cancel too far for double precision."
     return Finding(

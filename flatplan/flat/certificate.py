@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable
 from dataclasses import dataclass
 
@@ -23,6 +24,8 @@ class Certificate(Record):
         Largest Gevrey order s among the moves. Below 2 the series converges at every duration; at 2 under a threshold.
     radius : float
         Smallest ρ [s] of the bounds ``sup|y^(k)| ≤ M (k!)^s / ρ^k``.
+    log_constant : float
+        ln M of the same bounds, for k ≥ 1 and all moves together (M itself leaves the range of a float at low orders), SI.
     terms : int
         Highest derivative used in any move.
     digits : int
@@ -61,11 +64,17 @@ class Certificate(Record):
     target_kind: str = "pressure"
     target_rounding: float = 0.0
     share_of_threshold: float = 0.0
+    log_constant: float = math.nan
 
     @property
     def met(self) -> bool:
         """Whether tail and rounding together stay within the tolerance in every channel."""
         return all(self.tail[c] + self.rounding[c] <= self.tolerance * self.peak[c] for c in self.tail)
+
+    @property
+    def rounding_basis(self) -> str:
+        """What the bounds on rounding rest on: "proven", or in double precision "calibrated" against ball arithmetic."""
+        return "proven" if self.digits > 16 else "calibrated"
 
     @property
     def convergence(self) -> str:
@@ -77,11 +86,12 @@ class Certificate(Record):
     def _rows(self) -> Iterable[tuple[str, str]]:
         yield "Gevrey order", f"{self.order:.4g} ({self.convergence})"
         yield "radius ρ", units.text(self.radius, "time")
-        yield "terms", f"{self.terms}, in {self.digits} digits"
+        yield "ln M", f"{self.log_constant:.4g} of sup|y^(k)| ≤ M (k!)^s / ρ^k, k ≥ 1, SI"
+        yield "terms", f"{self.terms}, in {self.digits} digits (bounds on rounding: {self.rounding_basis})"
         for channel, tail in self.tail.items():
             kind, words = described(channel, self.target_kind)
             peak = self.peak[channel] or 1.0
-            yield words, f"tail ≤ {tail / peak:.1e}, rounding about {self.rounding[channel] / peak:.1e} of {units.text(peak, kind)}"
+            yield words, f"tail ≤ {tail / peak:.1e}, rounding ≤ {self.rounding[channel] / peak:.1e} of {units.text(peak, kind)}"
         yield "within tolerance", f"{'yes' if self.met else 'NO'} ({self.tolerance:.1e} of each peak)"
         share = self.target_rounding / (self.peak["target_pressure"] or 1.0)
         if share > _WORTH_SAYING:

@@ -17,7 +17,7 @@ from flatplan.flat.plan import SERIES_NAME, Plan
 from flatplan.flat.remedy import past_the_threshold, too_many_terms
 from flatplan.flat.rise import Rise
 from flatplan.flat.summation import SeriesSum
-from flatplan.flat.tail import MOST_BOUNDED, MOST_TERMS, gevrey_radius, tail_table
+from flatplan.flat.tail import MOST_BOUNDED, MOST_TERMS, gevrey_log_constant, gevrey_radius, tail_table
 from flatplan.flat.target import LEAST_ORDER, Target
 from flatplan.records import of_type
 from flatplan.site import Medium
@@ -257,6 +257,7 @@ class _Planner:
             peak=peak_out,
             cancellation=cancellation,
             target_kind=self.target.kind,
+            log_constant=gevrey_log_constant(self.rises),
             target_rounding=self._target_moved(rounding["injection_rate", 0]),
             share_of_threshold=max((0.5 * self.medium.travel_time / r.width for r in self.rises if r.order >= 2.0), default=0.0),
         )

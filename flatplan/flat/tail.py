@@ -117,3 +117,17 @@ def _unit_rest(t_d: float, width: float, gamma: float, shift: int, orders: int) 
 def gevrey_radius(rise: Rise) -> float:
     """ρ of the uniform Gevrey bound ``sup|y^(k)| ≤ M (k!)^s / ρ^k`` of a rise [s]."""
     return closed_form_radius(rise.gamma) * rise.width
+
+
+def gevrey_log_constant(rises: tuple[Rise, ...]) -> float:
+    """ln M of ``sup|y^(k)| ≤ M (k!)^s / ρ^k``, k ≥ 1, for a sum of rises, with s the largest order and ρ the smallest radius; from above.
+
+    One rise has ``y^(k) = w b^(k-1)/(I D^k)`` or means of it over a ramp, so by (2) of `bounds` M = |w| ρ_b e^(4^γ)/I, as
+    ((k-1)!)^s ≤ (k!)^s; a larger s and a smaller ρ only raise the bound, so the M of a sum is the sum.
+    """
+    logs = [
+        math.log(abs(rise.weight) * closed_form_radius(rise.gamma) * (1.0 + 1e-12) / bump_integral(rise.gamma).total) + 4.0**rise.gamma
+        for rise in rises
+    ]
+    largest = max(logs)
+    return largest + math.log(sum(math.exp(v - largest) for v in logs)) + _INTEGRAL_SLACK

@@ -70,11 +70,13 @@ def certificate_part(plan: Plan, system: str) -> Markup:
         if certificate.met
         else f"Together they exceed the tolerance that was asked for, {significant(certificate.tolerance, 2)} of each channel's peak."
     )
+    proven = certificate.rounding_basis == "proven"
+    basis = "proven too" if proven else "a bound calibrated against exact arithmetic"
     words = (
         "The rate is the exact answer of the model described under inputs, written as a series in the derivatives of the target and cut "
         f"after derivative {certificate.terms}. What the cut leaves out is at most {significant(tail, 2)} of the peak of any "
         "channel: that "
-        f"is proven. Rounding adds about {significant(rounding, 2)}: that is an estimate. {outcome} "
+        f"is proven. Rounding adds at most {significant(rounding, 2)}: that is {basis}. {outcome} "
         f"For the injection rate the two come to {amount(rate, 'rate', system, 2)}"
     )
     if rate < _NEGLIGIBLE * certificate.peak["injection_rate"]:
@@ -96,7 +98,7 @@ def certificate_part(plan: Plan, system: str) -> Markup:
         label = f"{title}{', change' if kind == 'pressure' else ''} [{unit}]"
         peak, low, high = (getattr(certificate, what)[name] / factor for what in ("peak", "tail", "rounding"))
         rows.append((label, significant(peak), significant(low, 2), significant(high, 2), significant(certificate.cancellation[name], 3)))
-    head = ("channel", "peak", "left out, at most (proven)", "rounding, about (estimated)", "cancellation")
+    head = ("channel", "peak", "left out, at most (proven)", f"rounding, at most ({certificate.rounding_basis})", "cancellation")
     return joined(
         [
             element("p", words),
