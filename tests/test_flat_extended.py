@@ -131,6 +131,25 @@ def test_panels_are_as_near_as_they_say(gamma, x, count):
             assert balls.distance(float(value), ball) <= bound
 
 
+@pytest.mark.parametrize(
+    ("gamma", "x", "count", "panel"), [(1.25, 4.0, 120, (0.02, 0.03)), (2.0, 16.0, 150, (0.06, 0.085)), (4.0, 8.0, 80, (0.36, 0.48))]
+)
+def test_the_distance_of_a_coarse_interpolant_is_below_its_bound(gamma, x, count, panel):
+    """Panels so long that the distance is far above rounding. The bound takes no cancellation into account: terms here are up to 1e12
+    times their sum."""
+    weights = weights_of(gamma, x, count)
+    a, b = panel
+    centre, half = 0.5 * (a + b), 0.5 * (b - a)
+    u, _, _ = corner_curve.places_and_weights()
+    values = np.array([float(v.mid()) for v in exact_curve(gamma, weights, centre + half * u)])
+    curve = corner_curve.CornerCurve(np.array([panel]), np.repeat(values[None, :, None, None], 2, axis=2))
+    near = np.linspace(a, b, 43)[1:-1]
+    found = curve.evaluate(near, np.zeros(near.size, dtype=bool))[0]
+    worst = max(balls.distance(float(v), e) for v, e in zip(found, exact_curve(gamma, weights, near), strict=True))
+    bound = corner_curve.log_distance(centre, half, gamma, weights.logs, 0)[0]
+    assert math.log(worst) <= bound <= math.log(worst) + 50.0
+
+
 def test_far_from_an_end_fewer_orders_count_and_what_is_left_out_is_small():
     weights = weights_of(2.0, 16.0, 170)
     allowed = np.array([math.log(1e-3)])
