@@ -18,7 +18,7 @@ _ROOMS = {
     "slab": "site", "radial": "site", "spherical": "site", "zoned": "site",
     "Target": "flat", "feedforward": "flat",
     "Steps": "numeric", "simulate": "numeric", "confirm": "numeric",
-    "Limits": "decide", "assess": "decide",
+    "Limits": "decide", "assess": "decide", "quickest": "decide", "closest": "decide",
     "steps": "field",
     "table": "show", "plot": "show", "report": "show",
 }  # fmt: skip

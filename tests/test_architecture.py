@@ -28,8 +28,8 @@ FLOORS = {
 ROOMS = ["site", "flat", "numeric", "decide", "field", "show", "cli"]
 
 PUBLIC = [
-    "ConfiningBed", "Face", "Fluid", "Limits", "Rock", "RockProfile", "Steps", "Target", "Well", "Zone", "assess", "confirm",
-    "feedforward", "plot", "radial", "report", "simulate", "slab", "spherical", "steps", "table", "zoned",
+    "ConfiningBed", "Face", "Fluid", "Limits", "Rock", "RockProfile", "Steps", "Target", "Well", "Zone", "assess", "closest", "confirm",
+    "feedforward", "plot", "quickest", "radial", "report", "simulate", "slab", "spherical", "steps", "table", "zoned",
 ]  # fmt: skip
 
 

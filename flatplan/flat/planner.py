@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 
@@ -115,8 +116,8 @@ class _Planner:
         self.grid = _grid(target)
         self.overlap = _largest_overlap(self.rises)
         self.answer = TargetAnswer.of(medium)
-        # Equal rises (but for when and how much) share their tails.
-        self.tails: dict[tuple[float, float, float, float], np.ndarray] = {}
+        # Equal rises (but for when and how much) share their tails: those of a change of one.
+        self.tails: dict[tuple[float, float, float], np.ndarray] = {}
 
     def plan(self) -> Plan:
         terms = tuple(8 for _ in self.rises)
@@ -182,15 +183,15 @@ class _Planner:
 
     def _tail(self, rise: Rise, allowed: np.ndarray) -> np.ndarray:
         """Tail bounds of a rise for the deciding channels, with more orders bounded one by one until some cut is allowed."""
-        key = (rise.width, rise.ramp, rise.gamma, abs(rise.weight))
+        key, weight = (rise.width, rise.ramp, rise.gamma), abs(rise.weight)
         orders = _FIRST_ORDERS
         while True:
             table = self.tails.get(key)
             if table is None or table.shape[1] <= orders:
-                table = self.tails[key] = self._with_target(tail_table(self.medium, rise, _DECIDING, orders))
+                table = self.tails[key] = self._with_target(tail_table(self.medium, replace(rise, weight=1.0), _DECIDING, orders))
             # the closed form's rest should be negligible, or the cut comes later than it need
-            if np.all(table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_BOUNDED:
-                return table
+            if np.all(weight * table[:, -1] <= 1e-6 * allowed) or table.shape[1] > MOST_BOUNDED:
+                return weight * table
             orders = min(2 * orders, MOST_BOUNDED)
 
     def _with_target(self, tails: np.ndarray) -> np.ndarray:
@@ -201,7 +202,7 @@ class _Planner:
         return np.vstack([tails, moved])
 
     def _held_tail(self, rise: Rise) -> np.ndarray:
-        return self.tails[rise.width, rise.ramp, rise.gamma, abs(rise.weight)]
+        return abs(rise.weight) * self.tails[rise.width, rise.ramp, rise.gamma]
 
     def _terms(self, rise: Rise, peak: dict) -> int:
         allowed = self.tolerance * np.array([*(peak[key] for key in _DECIDING), self.target.largest_change]) / (2.0 * self.overlap)
