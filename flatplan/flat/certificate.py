@@ -36,7 +36,7 @@ class Certificate(Record):
         Proven bound on what the cut leaves out, for each channel, SI. For the target: how far the cut of the rate can move it.
     rounding : dict of str to float
         Bound on the rounding error of the sum, for each channel, SI: proven where more digits than a double's are carried; in
-        double precision calibrated against ball arithmetic (of which it is at least twice the largest error found). For the target: of
+        double precision calibrated against ball arithmetic (at most 0.6 of it was used in 2,000 random cases). For the target: of
         the target as stated.
     peak : dict of str to float
         Largest size met on the plan's own grid, for each channel (pressures: of the change), SI.
