@@ -26,7 +26,7 @@ from flatplan.flat.corner_curve import NODES, log_largest, log_sums, orders_need
 _LN2 = math.log(2.0)
 _TO_SPARE = 8  # orders, so that the sums of other derivatives find the row made
 _BITS_TO_SPARE = 24
-_MANY_BITS = 1200
+_MANY_BITS, _MANY_BITS_PER_ORDER = 1000, 5
 _GUARD = 12  # bits below what is allowed at which integers are cut
 
 
@@ -105,7 +105,7 @@ def panel_needs(panels: list[tuple[float, float]], gamma: float, weights: Weight
         if np.all(log_largest(centre, half, gamma, weights.logs, weights.first) <= log_allowed):
             continue
         need = panel_need((a, b), gamma, weights, log_allowed)
-        if need.bits > _MANY_BITS and half > 1e-3 * centre:
+        if need.bits > _MANY_BITS + _MANY_BITS_PER_ORDER * need.orders(weights.first) and half > 1e-3 * centre:
             stack += [(centre, b), (a, centre)]
         else:
             out.append(need)
