@@ -83,7 +83,7 @@ def test_every_number_has_a_unit(name, system):
     assert found.columns.is_unique
     known = {label(kind, system) for kind in KINDS} | {"-"}
     for column in found.select_dtypes("number"):
-        by_row = "unit" in found and column in ("value", "limit", "margin", "peak", "tail bound", "rounding estimate")
+        by_row = "unit" in found and column in ("value", "limit", "margin", "peak", "tail bound", "rounding bound")
         unit = re.search(r" \[(.+)\]$", column)
         assert by_row or unit or column == "step", column
         assert unit is None or unit[1] in known
@@ -219,10 +219,10 @@ def test_a_certificate_has_one_row_a_channel():
     row = found.loc["injection rate"]
     assert row["peak"] == pytest.approx(certificate.peak["injection_rate"] * 3600.0, rel=1e-14)
     assert row["tail bound"] == pytest.approx(certificate.tail["injection_rate"] * 3600.0, rel=1e-14)
-    assert row["rounding estimate"] == pytest.approx(certificate.rounding["injection_rate"] * 3600.0, rel=1e-14)
+    assert row["rounding bound"] == pytest.approx(certificate.rounding["injection_rate"] * 3600.0, rel=1e-14)
     assert row["unit"] == "m³/h"
     np.testing.assert_allclose(
-        found["tail and rounding over peak [-]"] * found["peak"], found["tail bound"] + found["rounding estimate"], rtol=1e-12
+        found["tail and rounding over peak [-]"] * found["peak"], found["tail bound"] + found["rounding bound"], rtol=1e-12
     )
 
 

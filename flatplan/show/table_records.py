@@ -72,7 +72,7 @@ def certificate_table(certificate: Certificate, system: str) -> pd.DataFrame:
             ),
             Column("peak", None, rows["peak"]),
             Column("tail bound", None, rows["tail"]),
-            Column("rounding estimate", None, rows["rounding"]),
+            Column("rounding bound", None, rows["rounding"]),
             Column("unit", None, [_unit(kind, system) for kind in kinds]),
             Column("tail and rounding over peak", "fraction", share),
             Column("tolerance", "fraction", np.full(len(names), certificate.tolerance)),

@@ -116,7 +116,7 @@ def run(wanted: int, start: int, tally: Tally, minutes: float | None = None) -> 
             before = time.process_time()
             try:
                 outcome = check(case)
-            except Exception as fault:  # counted, and the run goes on
+            except Exception as fault:  # of whatever kind: it is printed and counted, the run goes on, and ends with an error
                 tally.faults.append((case, f"{type(fault).__name__}: {fault}"))
                 tqdm.write(f"FAULT {tally.faults[-1][1]}: {case!r}")
                 return
